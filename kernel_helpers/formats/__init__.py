@@ -1,0 +1,1 @@
+"""File formats: text to plain rows and back, and nothing else."""
