@@ -1,0 +1,1 @@
+"""Motion and light: predicted directions of an orbit."""

@@ -1,0 +1,249 @@
+"""Gauss's method: slant ranges from three lines of sight by the eighth-degree polynomial.
+
+With r the distance at the middle observation, rho2 = A + gm B / r^3 and r^2 = |R2 + rho2 L2|^2 give
+x^8 + a x^6 + b x^3 + c = 0. (L may be slightly off unit length, L' = L + Vc/c; |L2|^2 enters a, b, c.)
+
+All positive roots, with certainty: c <= 0 and a <= 0; the derivative is x^2 (8 x^5 + 6 a x^3 + 3 b), whose
+bracketed quintic has its own only positive critical point at x = sqrt(-9 a / 20). Between these points the
+polynomial is monotone, so each root is bracketed and none can be missed.
+
+Source: Curtis, *Orbital Mechanics for Engineering Students*, section 5.10, algorithm 5.5.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from firstarc.preliminary.lines_of_sight import Array, Lines, cross, dot
+
+_EPS = float(np.finfo(float).eps)
+
+
+class RangePolynomial(NamedTuple):
+    """Coefficients of x^8 + a x^6 + b x^3 + c and of rho2 = A + gm B / r^3, one lane per triple.
+
+    Units: a km^2, b km^5, c km^8, A km, B km s^2. ``determinant`` is L1 . (L2 x L3); ``normals`` are
+    L2 x L3, L1 x L3, L1 x L2, shape (3, 3, m).
+    """
+
+    a: Array
+    b: Array
+    c: Array
+    big_a: Array
+    big_b: Array
+    determinant: Array
+    normals: Array
+
+
+def range_polynomial(lines: Lines) -> RangePolynomial:
+    """The polynomial of each lane."""
+    with np.errstate(all="ignore"):
+        los, seen, gm = lines.effective, lines.observer_km, lines.gm_km3_s2
+        l1, l2, l3 = los
+        # L1 x L3 and the others from differences: the determinant of a short arc keeps its digits.
+        ahead, back = l3 - l2, l1 - l2
+        p1, p3 = cross(l2, ahead), -cross(l2, back)
+        p2 = cross(back, ahead) + p1 + p3
+        d0 = dot(l2, cross(ahead, back))
+        tau1, tau3 = lines.t_s[0], lines.t_s[2]
+        tau = tau3 - tau1
+        w1, w3 = tau3 / tau, -tau1 / tau
+        first, last = dot(seen[0], p2), dot(seen[2], p2)
+        big_a = dot(p2, seen[1] - w1 * seen[0] - w3 * seen[2]) / d0
+        big_b = (first * (tau3**2 - tau**2) * w1 - last * (tau**2 - tau1**2) * w3) / (6.0 * d0)
+        e, f, square = dot(seen[1], l2), dot(l2, l2), dot(seen[1], seen[1])
+        u = gm * big_b
+        return RangePolynomial(
+            -(f * big_a**2 + 2.0 * big_a * e + square),
+            -2.0 * u * (e + f * big_a),
+            -f * u**2,
+            big_a,
+            big_b,
+            d0,
+            np.stack((p1, p2, p3)),
+        )
+
+
+def _safe_halley(
+    derivatives: Callable[..., tuple[Array, Array, Array]],
+    coefficients: tuple[Array, ...],
+    low: Array,
+    high: Array,
+    rising: Array,
+) -> Array:
+    """Halley's iteration inside brackets of monotone lanes, else the geometric middle (low > 0)."""
+    out = np.sqrt(low * high)
+    lanes = np.arange(out.size)
+    x = out.copy()
+    for _ in range(200):
+        value, slope, curve = derivatives(x, *coefficients)
+        below = (value < 0.0) == rising
+        low = np.where(below, x, low)
+        high = np.where(below, high, x)
+        trial = x - value * slope / (slope * slope - 0.5 * value * curve)
+        inside = (trial > low) & (trial < high)
+        following = np.where(inside, trial, np.sqrt(low * high))
+        following = np.where(value == 0.0, x, following)
+        # Third order: what a step of this size leaves is below a rounding.
+        going = np.abs(following - x) > 1e-9 * x
+        out[lanes] = following
+        count = int(np.count_nonzero(going))
+        if not count:
+            break
+        if count < going.size:
+            lanes, low, high, rising = lanes[going], low[going], high[going], rising[going]
+            following = following[going]
+            coefficients = tuple(k[going] for k in coefficients)
+        x = following
+    return out
+
+
+def _octic(x: Array, a: Array, b: Array, c: Array) -> tuple[Array, Array, Array]:
+    square = x * x
+    cube = square * x
+    return (
+        ((square + a) * cube + b) * cube + c,
+        ((8.0 * square + 6.0 * a) * cube + 3.0 * b) * square,
+        ((56.0 * square + 30.0 * a) * cube + 6.0 * b) * x,
+    )
+
+
+def _quintic(x: Array, a: Array, b: Array) -> tuple[Array, Array, Array]:
+    square = x * x
+    cube = square * x
+    return (
+        (8.0 * square + 6.0 * a) * cube + 3.0 * b,
+        (40.0 * square + 18.0 * a) * square,
+        160.0 * cube + 36.0 * a * x,
+    )
+
+
+def positive_roots(a: ArrayLike, b: ArrayLike, c: ArrayLike) -> tuple[Array, Array]:
+    """Every positive root of x^8 + a x^6 + b x^3 + c for a <= 0 and c <= 0.
+
+    Parameters
+    ----------
+    a, b, c : array_like, shape (m,)
+        In km^2, km^5, km^8 (or any unit); the roots come in that unit. Scaled inside.
+
+    Returns
+    -------
+    roots : ndarray, shape (m, 3)
+        Ascending, NaN where there are fewer than three.
+    double : ndarray of bool, shape (m, 3)
+        Marks a root that is double to rounding (two roots run together); it is listed once.
+    """
+    return _roots_of(*(np.atleast_1d(np.asarray(k, dtype=float)) for k in (a, b, c)))
+
+
+def _roots_of(a: Array, b: Array, c: Array) -> tuple[Array, Array]:
+    m = a.size
+    roots = np.full((m, 3), np.nan)
+    double = np.zeros((m, 3), dtype=bool)
+    with np.errstate(all="ignore"):
+        unit = np.maximum(np.maximum(np.sqrt(np.abs(a)), np.abs(b) ** 0.2), np.abs(c) ** 0.125)
+        good = np.isfinite(a) & np.isfinite(b) & np.isfinite(c) & (unit > 0.0) & (a <= 0.0) & (c <= 0.0)
+        if not good.any():
+            return roots, double
+        lanes = np.flatnonzero(good)
+        unit = unit[lanes]
+        a, b, c = a[lanes] / unit**2, b[lanes] / unit**5, c[lanes] / unit**8
+        # Cauchy-like bound: each other term is below x^8 / 3.
+        top = np.maximum(np.maximum(np.sqrt(3.0 * -a), np.abs(3.0 * b) ** 0.2), (3.0 * -c) ** 0.125) * (1.0 + 1e-9)
+        floor = np.minimum((-0.5 * c) ** 0.125, np.where(b > 0.0, np.cbrt(-0.5 * c / b), np.inf)) * (1.0 - 1e-9)
+        floor = np.maximum(floor, 1e-60)
+        turn = np.sqrt(-0.45 * a)
+        dip = _quintic(turn, a, b)[0]
+        humps = (b > 0.0) & (dip < 0.0)
+        upper = np.full(lanes.size, np.nan)
+        need = humps | (b <= 0.0)
+        k = np.flatnonzero(need)
+        if k.size:
+            start = np.maximum(turn[k], 1e-60)
+            upper[k] = _safe_halley(_quintic, (a[k], b[k]), start, top[k], np.ones(k.size, bool))
+        lower = np.full(lanes.size, np.nan)
+        h = np.flatnonzero(humps)
+        if h.size:
+            # On (0, turn) the quintic exceeds 3 b - 6 |a| x^3, so its root lies above this.
+            start = np.cbrt(0.5 * b[h] / -a[h]) * (1.0 - 1e-9)
+            lower[h] = _safe_halley(_quintic, (a[h], b[h]), start, turn[h], np.zeros(h.size, bool))
+
+        def height(x: Array) -> tuple[Array, Array]:
+            size = x**8 - a * x**6 + np.abs(b) * x**3 - c
+            value = _octic(x, a, b, c)[0]
+            return value, np.abs(value) <= 32.0 * _EPS * size
+
+        peak, peak_zero = height(lower)
+        valley, valley_zero = height(upper)
+        peak_zero &= humps
+        valley_zero &= humps & ~peak_zero & (peak > 0.0)
+        high_peak = humps & (peak > 0.0) & ~peak_zero
+        # Slots 0, 1, 2: below the peak, on the way down, after the valley.
+        slot = np.full((3, lanes.size), False)
+        slot[0] = high_peak
+        slot[1] = high_peak & (valley < 0.0) & ~valley_zero
+        slot[2] = (b <= 0.0) | (humps & (valley < 0.0) & ~valley_zero) | ((b > 0.0) & ~humps)
+        lows = np.stack((floor, lower, np.where(need, upper, floor)))
+        highs = np.stack((lower, upper, top))
+        which, lane = np.nonzero(slot)
+        found = np.full((3, lanes.size), np.nan)
+        found[which, lane] = _safe_halley(
+            _octic, (a[lane], b[lane], c[lane]), lows[which, lane], highs[which, lane], which != 1
+        )
+        found[0] = np.where(peak_zero, lower, found[0])
+        found[1] = np.where(valley_zero, upper, found[1])
+        marks = np.zeros((3, lanes.size), bool)
+        marks[0], marks[1] = peak_zero, valley_zero
+        order = np.argsort(found, axis=0)
+        roots[lanes] = (np.take_along_axis(found, order, 0) * unit).T
+        double[lanes] = np.take_along_axis(marks, order, 0).T
+    return roots, double
+
+
+class GaussEstimate(NamedTuple):
+    """Per lane: slant ranges (3, m) km, positions (3, 3, m) km, velocity (3, m) km/s at the middle."""
+
+    range_km: Array
+    r_km: Array
+    v2_km_s: Array
+
+
+def ranges_of_weights(lines: Lines, poly: RangePolynomial, c1: Array, c3: Array) -> Array:
+    """Slant ranges (3, m) of coplanar positions with r2 = c1 r1 + c3 r3."""
+    seen = lines.observer_km
+    rest = seen[1] - c1 * seen[0] - c3 * seen[2]
+    along = dot(poly.normals, rest[None]) / poly.determinant
+    along[0] /= c1
+    along[2] /= c3
+    return along
+
+
+def gauss_estimate(lines: Lines, poly: RangePolynomial, root_km: Array) -> GaussEstimate:
+    """Slant ranges, positions and the Lagrange-series velocity for one root per lane.
+
+    The series are those of the method: f = 1 - u t^2 / 2, g = t - u t^3 / 6 with u = gm / r^3.
+    """
+    with np.errstate(all="ignore"):
+        tau1, tau3 = lines.t_s[0], lines.t_s[2]
+        tau = tau3 - tau1
+        u = lines.gm_km3_s2 / root_km**3
+        c1 = tau3 / tau * (1.0 + u / 6.0 * (tau**2 - tau3**2))
+        c3 = -tau1 / tau * (1.0 + u / 6.0 * (tau**2 - tau1**2))
+        along = ranges_of_weights(lines, poly, c1, c3)
+        r = lines.observer_km + along[:, None, :] * lines.effective
+        f1, f3 = 1.0 - 0.5 * u * tau1**2, 1.0 - 0.5 * u * tau3**2
+        g1, g3 = tau1 - u * tau1**3 / 6.0, tau3 - u * tau3**3 / 6.0
+        v2 = (f1 * r[2] - f3 * r[0]) / (f1 * g3 - f3 * g1)
+    return GaussEstimate(along, r, v2)
+
+
+def root_function(a: float, b: float, c: float, x_km: ArrayLike, unit_km: float) -> Array:
+    """x^8 + a x^6 + b x^3 + c at x, divided by unit^8: a number of order one to draw."""
+    y = np.asarray(x_km, dtype=float) / unit_km
+    a, b, c = a / unit_km**2, b / unit_km**5, c / unit_km**8
+    value: Array = ((y * y + a) * y**3 + b) * y**3 + c
+    return value

@@ -1,0 +1,1 @@
+"""Two-body motion: universal-variable propagation and classical elements."""
