@@ -1,0 +1,105 @@
+"""The result of a preliminary orbit determination: every root, ranked, with its reasons."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ..errors import UsageError
+from ..report.rounding import DASH, fixed, scientific, significant
+from ..results import Result, Status
+from .stages import Candidate
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class Preliminary(Result):
+    """Preliminary orbits through three of the observations.
+
+    Attributes
+    ----------
+    pick : tuple of int
+        Positions in the observations of the three used, in the order of time.
+    pick_reason : str
+    method : {"gauss"}
+    status : Status
+    candidates : tuple of Candidate
+        Every positive root: admissible ones first, best first; rejected ones keep their reason.
+    roots_km : ndarray
+        All positive roots of the eighth-degree equation, ascending.
+    coefficients : tuple of float
+        a, b, c of x^8 + a x^6 + b x^3 + c = 0 with x in units of ``unit_km``.
+    unit_km : float
+    determinant : float
+        Triple product of the three (unit) lines of sight.
+    determinant_sigma : float
+        Its sigma from the stated sigmas of the observations.
+    separations_deg : tuple of float
+        Angles between the first and second, and second and third, lines of sight.
+    center : {"earth", "sun"}
+    """
+
+    pick: tuple[int, int, int]
+    pick_reason: str
+    method: str
+    status: Status
+    candidates: tuple[Candidate, ...]
+    roots_km: NDArray[np.float64]
+    coefficients: tuple[float, float, float]
+    unit_km: float
+    determinant: float
+    determinant_sigma: float
+    separations_deg: tuple[float, float]
+    center: str
+
+    @property
+    def best(self) -> Candidate | None:
+        """The first admissible candidate; None when every root is rejected (``status`` says why)."""
+        return next((c for c in self.candidates if c.admissible), None)
+
+    def candidate(self, letter: str) -> Candidate:
+        """The candidate of that letter.
+
+        Raises
+        ------
+        UsageError
+            There is none.
+        """
+        for candidate in self.candidates:
+            if candidate.letter == letter:
+                return candidate
+        known = ", ".join(c.letter for c in self.candidates) or "none"
+        raise UsageError(f"letter must be one of {known}, got {letter!r}")
+
+    def report_lines(self) -> list[Any]:
+        numbers = " · ".join(str(index) for index in self.pick)
+        first, second = (fixed(angle, 2) for angle in self.separations_deg)
+        lines: list[Any] = [
+            f"Preliminary orbit by Gauss' method, observations at positions {numbers}: {self.pick_reason}",
+            str(self.status),
+            f"lines of sight {first}° and {second}° apart, determinant {scientific(self.determinant)}"
+            f" with sigma {scientific(self.determinant_sigma)}",
+        ]
+        unit, scale = ("km", 1.0) if self.center == "earth" else ("au", 149597870.7)
+        if self.candidates:
+            digits = 6
+            table = [["root", f"r {unit}", f"slant ranges {unit}", f"a {unit}", "e", "rms others ″", "verdict"]]
+            for c in self.candidates:
+                elements = c.elements
+                table.append(
+                    [
+                        c.letter,
+                        significant(c.root_km / scale, digits),
+                        " · ".join(significant(x / scale, digits) for x in c.ranges_km),
+                        DASH if elements is None else significant(elements.a_km / scale, digits),
+                        DASH if elements is None else fixed(elements.e, 4),
+                        significant(c.rms_others_arcsec, 3),
+                        ("admissible: " if c.admissible else "rejected: ") + c.reason,
+                    ]
+                )
+            lines.append(table)
+        if self.best is not None:
+            lines += self.best.report_lines()
+        return lines

@@ -1,0 +1,1 @@
+"""What is handed on: code that repeats a determination."""

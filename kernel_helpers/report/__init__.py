@@ -1,0 +1,1 @@
+"""How results are written for people: digits, text and HTML."""

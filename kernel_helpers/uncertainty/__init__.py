@@ -1,0 +1,1 @@
+"""How far an orbit can be trusted."""
