@@ -1,0 +1,1 @@
+"""The widgets of firstarc: the Desk and what it is made of."""

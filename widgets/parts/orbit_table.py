@@ -1,0 +1,219 @@
+"""The three stages side by side: the same elements in each row, and the step from stage to stage."""
+
+from __future__ import annotations
+
+import math
+from typing import Any
+
+from firstarc.determination.elements import Elements
+from firstarc.determination.stages import Candidate, element_rows, sigma_rows
+from firstarc.report.rounding import DASH, agreeing, fixed, sigma_decimals, split_point
+
+from .snapshot import Snapshot, text
+
+#: symbol, long name; the periapsis row is named by the centre.
+ROWS: dict[str, tuple[list[Any], str]] = {
+    "a": ([text("a", em=1)], "semi-major axis"),
+    "e": ([text("e", em=1)], "eccentricity"),
+    "i": ([text("i", em=1)], "inclination"),
+    "node": ([text("Ω", em=1)], "ascending node"),
+    "argp": ([text("ω", em=1)], "argument of periapsis"),
+    "M": ([text("M", em=1)], "mean anomaly"),
+    "q": ([text("q", em=1)], "periapsis distance"),
+    "P": ([text("P", em=1)], "period"),
+}
+EARTH_Q = ([text("h", em=1), text("p", sub=1)], "perigee height")
+ANGLES = {"i": None, "node": 360.0, "argp": 360.0, "M": 360.0}
+#: Most decimals shown whatever sigma says: further ones are beyond the constants' own digits.
+MOST_DECIMALS = 8
+
+
+def orbit_table(snap: Snapshot, convergence: dict[str, Any] | None) -> dict[str, Any]:
+    """Elements of Gauss estimate, correction and converged orbit, sigma, and change from the recorded solution."""
+    chosen = snap.chosen
+    rule = "Gibbs" if chosen is None or not chosen.gibbs.rule else chosen.gibbs.rule.replace("-", "–")
+    row_number = snap.numbers[snap.pick[1]]
+    what_if = bool(snap.what_if)
+    columns = [
+        {
+            "title": "Gauss estimate",
+            "sub": "none" if chosen is None else f"root {chosen.letter}, row {row_number}",
+            "kind": "stage",
+        },
+        {
+            "title": f"{rule} correction",
+            "sub": "none" if chosen is None else rule_words(chosen),
+            "kind": "stage",
+        },
+        {"title": "Converged", "sub": "none" if chosen is None else passes(chosen), "kind": "stage"},
+        {"title": "± σ", "sub": "3 sightings", "kind": "sigma"},
+        {"title": "Δ recorded", "sub": "and in σ" if what_if else "no what-if", "kind": "recorded"},
+    ]
+    rows = [] if chosen is None else element_table_rows(snap, chosen) + closing_rows(snap, chosen)
+    return {
+        "note": caption_note(snap),
+        "columns": columns,
+        "rows": rows,
+        "none": "" if chosen is not None else no_orbit_sentence(snap),
+        "convergence": convergence,
+    }
+
+
+def rule_words(chosen: Candidate) -> str:
+    if chosen.gibbs.state is None:
+        return "no velocity"
+    return f"{chosen.gibbs.rule.replace('-', '–')} chosen"
+
+
+def passes(chosen: Candidate) -> str:
+    if chosen.converged.state is None:
+        return "not reached"
+    steps = max(len(chosen.history) - 1, 0)
+    return f"{steps} Newton step{'s' if steps != 1 else ''}"
+
+
+def caption_note(snap: Snapshot) -> str:
+    stamp = snap.obs.utc_iso(snap.pick[1], 2)
+    frame = "ICRF equator" if snap.center == "earth" else "J2000 ecliptic"
+    tail = " Underlined digits agree with the converged orbit." if snap.chosen is not None else ""
+    return f"at {stamp[:10]} {stamp[11:].rstrip('Z')} UTC, {frame}.{tail}"
+
+
+def no_orbit_sentence(snap: Snapshot) -> str:
+    if snap.failure is not None:
+        return f"No value: {snap.failure.sentence[0].lower()}{snap.failure.sentence[1:]}"
+    return "No value: no root is admissible."
+
+
+def element_table_rows(snap: Snapshot, chosen: Candidate) -> list[dict[str, Any]]:
+    stages = [element_rows(stage.elements) for stage in (chosen.gauss, chosen.gibbs, chosen.converged)]
+    sigma = sigma_rows(chosen.elements, chosen.sigmas) if snap.shows_sigma else {}
+    recorded = recorded_values(snap, chosen)
+    rows = []
+    for key, (symbol, name) in ROWS.items():
+        if key == "q" and snap.center == "earth":
+            symbol, name = EARTH_Q
+        elif key == "q":
+            name = "perihelion distance"
+        elif key == "argp":
+            name = "argument of perigee" if snap.center == "earth" else "argument of perihelion"
+        values = [stage[key][0] if stage else math.nan for stage in stages]
+        if not any(math.isfinite(value) for value in values):
+            continue
+        unit = next(stage[key][1] for stage in stages if stage)
+        places = row_places(values, sigma.get(key))
+        rows.append(
+            {
+                "key": key,
+                "symbol": symbol,
+                "name": name,
+                "unit": unit,
+                "kind": "element",
+                "cells": [
+                    *stage_cells(values, places, ANGLES.get(key)),
+                    sigma_cell(sigma.get(key), places),
+                    recorded_cell(values[2], recorded.get(key), sigma.get(key), places, ANGLES.get(key)),
+                ],
+            }
+        )
+    return rows
+
+
+def row_places(values: list[float], sigma: float | None) -> int:
+    """One fixed number of decimals for a row: sigma's, or four significant digits where there is no usable sigma."""
+    if sigma is not None and math.isfinite(sigma) and sigma > 0.0:
+        return min(sigma_decimals(sigma), MOST_DECIMALS)
+    size = max((abs(value) for value in values if math.isfinite(value)), default=1.0)
+    return 3 - math.floor(math.log10(size)) if size > 0.0 else 3
+
+
+def cell(value: str = "", **rest: Any) -> dict[str, Any]:
+    whole, fraction = split_point(value)
+    return {"whole": whole, "fraction": fraction, "agree": 0, "step": "", "in_sigma": "", "dev": False, **rest}
+
+
+def stage_cells(values: list[float], places: int, period: float | None) -> list[dict[str, Any]]:
+    cells = []
+    final = values[-1]
+    for index, value in enumerate(values):
+        shown = fixed(value, places)
+        agree = agreeing(shown, value, final, places, period=period) if index < len(values) - 1 else 0
+        step = "" if index == 0 else step_text(value, values[index - 1], places, period)
+        cells.append(cell(shown, agree=agree, step=step))
+    return cells
+
+
+def wrapped(difference: float, period: float | None) -> float:
+    return (difference + period / 2.0) % period - period / 2.0 if period else difference
+
+
+def step_text(value: float, before: float, places: int, period: float | None) -> str:
+    if not (math.isfinite(value) and math.isfinite(before)):
+        return ""
+    change = wrapped(value - before, period)
+    return "=" if round(change, places) == 0.0 else fixed(change, places, sign=True)
+
+
+def sigma_cell(sigma: float | None, places: int) -> dict[str, Any]:
+    if sigma is None or not math.isfinite(sigma) or sigma <= 0.0:
+        return cell(DASH)
+    return cell(fixed(sigma, places) if round(sigma, places) > 0.0 else f"<{fixed(10.0**-places, places)}")
+
+
+def recorded_values(snap: Snapshot, chosen: Candidate) -> dict[str, float]:
+    """Elements of the recorded solution, brought to the epoch of the present one."""
+    if not snap.what_if or snap.recorded is None or snap.recorded.state is None or chosen.state is None:
+        return {}
+    state = snap.recorded.state
+    if state.epoch_tdb != chosen.state.epoch_tdb:
+        state = state.propagated(chosen.state.epoch_tdb)
+    elements: Elements = state.elements
+    return {key: value for key, (value, _) in element_rows(elements).items()}
+
+
+def recorded_cell(
+    value: float, recorded: float | None, sigma: float | None, places: int, period: float | None
+) -> dict[str, Any]:
+    if recorded is None or not (math.isfinite(value) and math.isfinite(recorded)):
+        return cell("·")
+    change = wrapped(value - recorded, period)
+    in_sigma = ""
+    if sigma is not None and math.isfinite(sigma) and sigma > 0.0:
+        ratio = abs(change) / sigma
+        in_sigma = fixed(ratio, 1 if ratio < 100 else 0)
+    shown = "0" if round(change, places) == 0.0 else fixed(change, places, sign=True)
+    return cell(shown, in_sigma=in_sigma, dev=True)
+
+
+def closing_rows(snap: Snapshot, chosen: Candidate) -> list[dict[str, Any]]:
+    """Miss of the three sight lines, and rms over the rows in use, for every stage."""
+    stages = (chosen.gauss, chosen.gibbs, chosen.converged)
+    miss = [max(map(abs, stage.miss_arcsec), default=math.nan) for stage in stages]
+    rms = [stage.rms_arcsec for stage in stages]
+    blank = [cell(), cell()]
+    return [
+        {
+            "key": "miss",
+            "symbol": ["miss ″"],
+            "name": "largest angle between a picked line of sight and the orbit",
+            "unit": "",
+            "kind": "miss",
+            "cells": [*(cell(arcsec_text(value)) for value in miss), *blank],
+        },
+        {
+            "key": "rms",
+            "symbol": ["rms ″"],
+            "name": "rms of the residuals of the rows in use",
+            "unit": "",
+            "kind": "rms",
+            "cells": [*(cell(arcsec_text(value)) for value in rms), *blank],
+        },
+    ]
+
+
+def arcsec_text(value: float) -> str:
+    if not math.isfinite(value):
+        return DASH
+    if value < 0.005:
+        return "0.0"
+    return fixed(value, 2 if value < 10 else 1 if value < 10_000 else 0)
