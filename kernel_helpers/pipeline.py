@@ -33,6 +33,8 @@ from .results import Code, Status
 from .uncertainty.consistency import agreement_of_others
 
 Array = NDArray[np.float64]
+#: Methods of preliminary determination, and what they are called.
+METHODS = {"gauss": "Gauss"}
 BODY_RADIUS_KM = {"earth": EARTH_RADIUS_KM, "sun": SUN_RADIUS_KM}
 #: Roots are named from the outermost inwards, so that a root keeps its letter while sliders move.
 LETTERS = "ABCDEFGH"
@@ -64,8 +66,8 @@ def preliminary(obs: Observations, pick: Sequence[int] | None = None, method: st
     Gauss' method in the form of Curtis, *Orbital Mechanics for Engineering Students*, section 5.10; Gibbs' in that
     of Bate, Mueller and White 1971, section 2.5.
     """
-    if method != "gauss":
-        raise UsageError(f'method must be "gauss", got {method!r}')
+    if method not in METHODS:
+        raise UsageError(f"method must be one of {', '.join(map(repr, METHODS))}, got {method!r}")
     if not isinstance(obs, Observations):
         raise UsageError(f"obs must be Observations from firstarc.load, got {type(obs).__name__}")
     if pick is None:
@@ -92,6 +94,7 @@ def preliminary(obs: Observations, pick: Sequence[int] | None = None, method: st
     polynomial = solution.polynomial
     return Preliminary(
         pick=chosen,
+        pick_rows=(int(obs.rows[chosen[0]]) + 1, int(obs.rows[chosen[1]]) + 1, int(obs.rows[chosen[2]]) + 1),
         pick_reason=reason,
         method=method,
         status=solution.status,

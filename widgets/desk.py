@@ -7,13 +7,14 @@ from collections.abc import Sequence
 from dataclasses import replace
 from typing import Any
 
+import numpy as np
 import traitlets
 
 from firstarc.errors import UsageError
 from firstarc.observing.load import load
 from firstarc.observing.observations import Observations
 from firstarc.observing.what_if import WhatIf
-from firstarc.pipeline import default_pick
+from firstarc.pipeline import METHODS, default_pick
 from firstarc.record.cell_code import preliminary_code
 
 from .painting import Painter
@@ -46,6 +47,8 @@ class Desk(Scene):
         Positions of the observations taken out. Observable, may be set.
     what_if : tuple of WhatIf
         Offsets of the sliders. Observable, may be set.
+    method : str
+        Method of preliminary determination, see :func:`firstarc.preliminary`. Observable, may be set.
     candidate : str or None
         Letter of the root chosen by hand; None takes the best. Observable, may be set.
     preliminary : Preliminary or None
@@ -63,11 +66,18 @@ class Desk(Scene):
     excluded = traitlets.Any(())
     what_if = traitlets.Any(())
     candidate = traitlets.Unicode(None, allow_none=True)
+    method = traitlets.Unicode("gauss")
     preliminary = traitlets.Any(None)
     fit = traitlets.Any(None)
 
     def __init__(
-        self, obs: Any, *, pick: Sequence[int] | None = None, center: str | None = None, stations: Any = None, **given: Any
+        self,
+        obs: Any,
+        *,
+        pick: Sequence[int] | None = None,
+        center: str | None = None,
+        stations: Any = None,
+        **given: Any,
     ):
         unknown = [name for name in given if name not in ("layout", "tooltip", "tabbable")]
         if unknown:
@@ -92,7 +102,7 @@ class Desk(Scene):
         self._snapshot: Snapshot
         self._solve()
         self.observe(self._from_browser, "settings")
-        self.observe(self._from_python, ["pick", "excluded", "what_if", "candidate"])
+        self.observe(self._from_python, ["pick", "excluded", "what_if", "candidate", "method"])
 
     @property
     def best(self) -> Any:
@@ -101,13 +111,19 @@ class Desk(Scene):
 
     def code(self) -> str:
         """Python code that repeats what the Desk shows, to the last digit."""
-        return preliminary_code(
-            self.obs, self.what_if, self.excluded, self.pick, self.candidate if self._letter_is_set() else None
-        )
+        return self._code(self._in_force)
 
-    def _letter_is_set(self) -> bool:
+    def _code(self, settings: Settings) -> str:
         chosen = self._snapshot.chosen
-        return chosen is not None and chosen.letter == self.candidate
+        by_hand = chosen is not None and chosen.letter == settings.candidate
+        return preliminary_code(
+            self.obs,
+            self._snapshot.what_if,
+            settings.excluded,
+            settings.pick,
+            settings.candidate if by_hand else None,
+            settings.method,
+        )
 
     def _from_browser(self, change: Any) -> None:
         if self._busy or not change["new"]:
@@ -137,6 +153,10 @@ class Desk(Scene):
             return replace(self._in_force, excluded=checked_rows(value, count))
         if name == "candidate":
             return replace(self._in_force, candidate=value)
+        if name == "method":
+            if value not in METHODS:
+                raise UsageError(f"method must be one of {', '.join(map(repr, METHODS))}, got {value!r}")
+            return replace(self._in_force, method=value, candidate=None)
         offsets, row_clock = sliders_of(value, self.obs)
         return replace(self._in_force, offsets=offsets, row_clock=row_clock)
 
@@ -145,27 +165,26 @@ class Desk(Scene):
         excluded = tuple(row for row in settings.excluded if row not in settings.pick)
         settings = self._in_force = replace(settings, excluded=excluded)
         try:
-            snapshot = self._solver.snapshot(settings)
+            self._snapshot = self._solver.snapshot(settings)
+            scene, frame = self._painter.paint(self._snapshot, settings, self._code(settings))
         except Exception as error:  # whatever fails is said in the Desk: stale numbers must not stay
             traceback.print_exc()
-            snapshot = self._without_orbit(settings, error)
-        self._snapshot = snapshot
+            self._snapshot = self._without_orbit(settings, error)
+            scene, frame = self._painter.paint(self._snapshot, settings, self._code(settings))
         self._busy = True
         try:
             with self.hold_trait_notifications():
                 self.pick = settings.pick
                 self.excluded = settings.excluded
-                self.what_if = snapshot.what_if
+                self.what_if = self._snapshot.what_if
                 self.candidate = settings.candidate
-                self.preliminary = snapshot.preliminary
+                self.method = settings.method
+                self.preliminary = self._snapshot.preliminary
         finally:
             self._busy = False
-        scene, frame = self._painter.paint(snapshot, settings, self.code())
         self.show(scene, frame)
 
     def _without_orbit(self, settings: Settings, error: Exception) -> Snapshot:
-        import numpy as np
-
         return Snapshot(
             obs=self.obs,
             recorded_obs=self.obs,
@@ -179,6 +198,7 @@ class Desk(Scene):
             recorded=None,
             recorded_residuals=None,
             what_if=what_ifs_of(settings, self.obs),
+            method=settings.method,
             failure=Failure(
                 f"The computation stopped with {type(error).__name__}: {error}.",
                 "reset the what-if; the full message is in the notebook's log.",

@@ -112,7 +112,7 @@ def track_times(t_s: Array) -> Array:
     """Times along a run, s: they follow the recorded times, so that they stay while a clock slider moves."""
     begin, end = float(t_s[0]), float(t_s[-1])
     step = (end - begin) / TRACK_POINTS if end > begin else 1.0
-    return begin + step * np.arange(-TRACK_BEYOND, TRACK_POINTS + TRACK_BEYOND + 1)
+    return np.asarray(begin + step * np.arange(-TRACK_BEYOND, TRACK_POINTS + TRACK_BEYOND + 1), dtype=np.float64)
 
 
 def seconds_after(state: State, epoch_tdb: tuple[float, float]) -> float:
@@ -123,7 +123,8 @@ def seconds_after(state: State, epoch_tdb: tuple[float, float]) -> float:
 def positions_at(state: State, lines: Any) -> Array:
     """Positions at the times of the sightings, km. Light time moves them by less than a figure can show."""
     dt_s = lines.t_s - seconds_after(state, lines.epoch_tdb)
-    return np.asarray(propagate(state.r_km, state.v_km_s, dt_s, state.gm_km3_s2)[0], dtype=np.float64)
+    found: Array = np.array(propagate(state.r_km, state.v_km_s, dt_s, state.gm_km3_s2)[0], dtype=float)
+    return found
 
 
 def curve_of(state: State, scale: float) -> Array:

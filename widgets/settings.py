@@ -11,6 +11,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+from firstarc.pipeline import METHODS
+
 #: Keys of a station's offsets.
 OFFSETS = ("lat_deg", "lon_deg", "height_m", "clock_s")
 #: Largest offsets that are taken, so that a slip of the keyboard cannot ask for nonsense.
@@ -29,6 +31,7 @@ class Settings:
     offsets: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
     row_clock: Mapping[int, float] = field(default_factory=dict)
     candidate: str | None = None
+    method: str = "gauss"
     held: bool = False
     widths: Mapping[str, float] = field(default_factory=lambda: dict(WIDTHS))
     seq: int = -1
@@ -44,6 +47,7 @@ class Settings:
             "row_clock": {str(row): value for row, value in self.row_clock.items()},
             "row": self.row,
             "candidate": self.candidate,
+            "method": self.method,
             "held": self.held,
             "widths": dict(self.widths),
         }
@@ -64,6 +68,7 @@ def checked(raw: Mapping[str, Any], before: Settings, count: int, stations: tupl
         offsets=before.offsets if "offsets" not in raw else offsets_of(raw["offsets"], stations),
         row_clock=before.row_clock if "row_clock" not in raw else row_clock_of(raw["row_clock"], count),
         candidate=candidate if candidate is None or isinstance(candidate, str) else before.candidate,
+        method=raw["method"] if raw.get("method") in METHODS else before.method,
         held=raw.get("held") is True,
         widths=widths_of(raw.get("widths"), before.widths),
         seq=raw["seq"] if isinstance(raw.get("seq"), int) else before.seq,

@@ -64,7 +64,7 @@ class Solver:
         try:
             if what_if:
                 moved = self.obs.with_what_if(*what_if)
-            pre = self._preliminary(moved, used, settings.pick)
+            pre = self._preliminary(moved, used, settings)
         except FirstArcError as error:
             failure = Failure(sentence(str(error)), "reset the what-if or choose another pick.")
         chosen = chosen_of(pre, settings.candidate)
@@ -87,22 +87,23 @@ class Solver:
             recorded=recorded,
             recorded_residuals=self._residuals[1],
             what_if=what_if,
+            method=settings.method,
             failure=failure,
         )
 
-    def _preliminary(self, obs: Any, used: np.ndarray, pick: tuple[int, int, int]) -> Preliminary:
+    def _preliminary(self, obs: Any, used: np.ndarray, settings: Settings) -> Preliminary:
         if used.all():
-            return preliminary(obs, pick=pick)
-        kept = np.flatnonzero(used)
-        inside = np.searchsorted(kept, pick)
-        return preliminary(obs.without(np.flatnonzero(~used).tolist()), pick=tuple(int(i) for i in inside))
+            return preliminary(obs, pick=settings.pick, method=settings.method)
+        inside = np.searchsorted(np.flatnonzero(used), settings.pick)
+        kept = obs.without(np.flatnonzero(~used).tolist())
+        return preliminary(kept, pick=tuple(int(i) for i in inside), method=settings.method)
 
     def _recorded_candidate(self, used: np.ndarray, settings: Settings) -> Candidate | None:
-        key = (used.tobytes(), settings.pick)
+        key = (used.tobytes(), settings.pick, settings.method)
         if key not in self._recorded:
             # one entry: only the present choices are ever compared with
             try:
-                self._recorded = {key: self._preliminary(self.obs, used, settings.pick)}
+                self._recorded = {key: self._preliminary(self.obs, used, settings)}
             except FirstArcError:
                 self._recorded = {key: None}
         return chosen_of(self._recorded[key], settings.candidate)

@@ -22,6 +22,8 @@ class Preliminary(Result):
     ----------
     pick : tuple of int
         Positions in the observations of the three used, in the order of time.
+    pick_rows : tuple of int
+        Rows of the loaded input, counted from 1 as in tables and in the Desk.
     pick_reason : str
     method : {"gauss"}
     status : Status
@@ -30,8 +32,9 @@ class Preliminary(Result):
     roots_km : ndarray
         All positive roots of the eighth-degree equation, ascending.
     coefficients : tuple of float
-        a, b, c of x^8 + a x^6 + b x^3 + c = 0 with x in units of ``unit_km``.
+        a (km2), b (km5), c (km8) of x^8 + a x^6 + b x^3 + c = 0, x in km.
     unit_km : float
+        A length of the order of the roots; with x in units of it the coefficients are of order one.
     determinant : float
         Triple product of the three (unit) lines of sight.
     determinant_sigma : float
@@ -42,6 +45,7 @@ class Preliminary(Result):
     """
 
     pick: tuple[int, int, int]
+    pick_rows: tuple[int, int, int]
     pick_reason: str
     method: str
     status: Status
@@ -74,10 +78,10 @@ class Preliminary(Result):
         raise UsageError(f"letter must be one of {known}, got {letter!r}")
 
     def report_lines(self) -> list[Any]:
-        numbers = " · ".join(str(index) for index in self.pick)
+        numbers = " · ".join(str(row) for row in self.pick_rows)
         first, second = (fixed(angle, 2) for angle in self.separations_deg)
         lines: list[Any] = [
-            f"Preliminary orbit by Gauss' method, observations at positions {numbers}: {self.pick_reason}",
+            f"Preliminary orbit by Gauss' method, rows {numbers} (pick={self.pick}): {self.pick_reason}",
             str(self.status),
             f"lines of sight {first}° and {second}° apart, determinant {scientific(self.determinant)}"
             f" with sigma {scientific(self.determinant_sigma)}",

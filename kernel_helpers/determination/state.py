@@ -62,7 +62,10 @@ class State(Result):
 
     def __init__(self, r_km: Any, v_km_s: Any, epoch: Any, center: str):
         for name, given in (("r_km", r_km), ("v_km_s", v_km_s)):
-            vector = np.array(given, dtype=np.float64)
+            try:
+                vector = np.array(given, dtype=np.float64)
+            except (TypeError, ValueError):
+                vector = np.empty(0)
             if vector.shape != (3,) or not np.isfinite(vector).all():
                 raise UsageError(f"{name} must be three finite numbers, got {given!r}")
             object.__setattr__(self, name, vector)

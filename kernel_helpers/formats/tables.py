@@ -212,7 +212,7 @@ def _rows_of(
     problems = problems + _head_problems(names, None)
     count = len(columns[0][1]) if columns else 0
     rows = tuple(
-        PlainRow(f"row {i}", {n: texts[i] for n, texts in columns if n and texts[i]}) for i in range(count)
+        PlainRow(f"row {i + 1}", {n: texts[i] for n, texts in columns if n and texts[i]}) for i in range(count)
     )
     return PlainInput(format, False, rows, (), tuple(names)), problems
 

@@ -33,7 +33,7 @@ def order_doubts(records: Records) -> list[Doubt]:
             j = seen[key]
             doubts.append(
                 Doubt(
-                    f"rows {records.row[j]} and {records.row[i]} ({records.where[j]}, {records.where[i]}) "
+                    f"rows {records.row[j] + 1} and {records.row[i] + 1} ({records.where[j]}, {records.where[i]}) "
                     "have the same time and station, "
                     f"{utc_text(records.tai1[[i]], records.tai2[[i]], 3)[0]}",
                     (int(records.row[i]),),
@@ -46,7 +46,7 @@ def order_doubts(records: Records) -> list[Doubt]:
         first = int(back[0]) + 1
         doubts.append(
             Doubt(
-                f"observations are not in order of time (row {records.row[first]}, {records.where[first]}, "
+                f"observations are not in order of time (row {records.row[first] + 1}, {records.where[first]}, "
                 f"is earlier than the row above it{'' if len(back) == 1 else f'; {len(back)} such rows'}); "
                 "the order of the input is kept"
             )
@@ -115,7 +115,7 @@ def geometry_doubts(obs: Observations) -> list[str]:
     for i in low[:5]:
         site = obs.station_of(int(i))
         out.append(
-            f"row {obs.rows[i]} ({obs.records.where[i]}): the object is {-altitude[i]:.1f}° below the "
+            f"row {obs.rows[i] + 1} ({obs.records.where[i]}): the object is {-altitude[i]:.1f}° below the "
             f"horizon of station {site.label}; check time, station and direction"
         )
     if len(low) > 5:
@@ -132,7 +132,7 @@ def geometry_doubts(obs: Observations) -> list[str]:
 
 
 def _rows_of(obs: Observations, mask: NDArray[np.bool_]) -> str:
-    listed = obs.rows[mask].tolist()
+    listed = (obs.rows[mask] + 1).tolist()  # words count rows from 1, as the Desk does
     if len(listed) == len(obs):
         return "all rows"
     if len(listed) > 6:

@@ -75,7 +75,7 @@ class Observation(Shown):
         digits = degree_digits(min(self.sigma_ra_arcsec, self.sigma_dec_arcsec))
         place = place_words(self.lon_deg, self.lat_deg, self.height_m)
         return [
-            f"Observation, row {self.row}" + (f", of {self.object_name}" if self.object_name else ""),
+            f"Observation, row {self.row + 1}" + (f", of {self.object_name}" if self.object_name else ""),
             [
                 ["quantity", "value"],
                 ["time (UTC)", self.time_utc],

@@ -143,7 +143,8 @@ class Observations(Shown):
         Raises
         ------
         UsageError
-            An offset names a station or a row that is not among the loaded observations.
+            An offset names a station or a row that is not among the loaded observations, or moves a station over
+            a pole.
         """
         codes = [s.code for s in self.records.sites]
         for w in what_ifs:
@@ -151,7 +152,10 @@ class Observations(Shown):
                 raise UsageError(f"with_what_if({w!r}): give fa.WhatIf(...)")
             if w.station is not None and w.station not in codes:
                 raise UsageError(f"{w!r}: no observation is from station {w.station!r}; stations: {', '.join(codes)}")
-        return replace(self, what_if=tuple(w for w in what_ifs if not w.is_zero))
+        moved = replace(self, what_if=tuple(w for w in what_ifs if not w.is_zero))
+        if any(w.lat_deg for w in what_ifs):
+            _ = moved._places  # a station over a pole is refused here, not when it is first used
+        return moved
 
     @property
     def recorded(self) -> Observations:
@@ -284,7 +288,7 @@ class Observations(Shown):
         r = self.records
         sites = [r.sites[k] for k in r.site_index]
         columns: list[Any] = [
-            Column(r.row, "row"),
+            Column(r.row + 1, "row", description="row of the loaded input, from 1"),
             Column(list(r.time_text), "time_utc"),
             Column(r.ra_deg, "ra", unit=u.deg),
             Column(r.dec_deg, "dec", unit=u.deg),
@@ -350,7 +354,7 @@ class Observations(Shown):
         for i in shown:
             o = self._observation(i)
             rows.append(
-                [str(o.row), o.time_utc, f"{o.ra_deg:.{digits}f}", f"{o.dec_deg:+.{digits}f}",
+                [str(o.row + 1), o.time_utc, f"{o.ra_deg:.{digits}f}", f"{o.dec_deg:+.{digits}f}",
                  f"{o.sigma_ra_arcsec:.2g}", f"{o.sigma_dec_arcsec:.2g}", o.station]
             )  # fmt: skip
         out.append(rows)

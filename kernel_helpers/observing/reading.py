@@ -291,7 +291,7 @@ def _ints(values: Iterable[int]) -> tuple[int, ...]:
 
 def _rows_words(rows: Iterable[int]) -> str:
     """``row 3``, ``rows 1, 2, 5`` or ``40 rows``."""
-    listed = [int(r) for r in rows]
+    listed = [int(r) + 1 for r in rows]  # words count rows from 1, as the Desk does
     if len(listed) == 1:
         return f"row {listed[0]}"
     return f"rows {', '.join(map(str, listed))}" if len(listed) <= 6 else f"{len(listed)} rows"

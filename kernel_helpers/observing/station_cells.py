@@ -158,7 +158,7 @@ class StationCells:
             else:
                 wrong = "is not in the MPC list and not in stations="
                 remedy = f"Near matches: {'; '.join(near)}. " if near else ""
-                remedy += f"Or give stations={{{code!r}: dict(lon_deg=, lat_deg=, height_m=)}}"
+                remedy += f"{'Or give' if near else 'Give'} stations={{{code!r}: dict(lon_deg=, lat_deg=, height_m=)}}"
             where = places[0] if len(places) == 1 else f"{places[0]} and {len(places) - 1} more"
             field = "stn" if self.ades_words else "station"
             problems.append(Problem(f"{where}, field {field}", shortened(code), wrong, remedy))

@@ -24,7 +24,7 @@ from firstarc.preliminary.lines_of_sight import (
     time_ordered,
 )
 from firstarc.preliminary.outcome import Outcome
-from firstarc.preliminary.refine import angle_map, geometry, look
+from firstarc.preliminary.refine import angle_map, geometry, last_lanes, look
 from firstarc.preliminary.root_orbits import (
     EXCESS_LIMIT_KM_S,
     OWN_RANGE,
@@ -59,6 +59,8 @@ __all__ = [
     "solve_triple",
 ]
 
+#: Angle of motion during the light time below which a Taylor step is exact to rounding.
+_SHORT = 2e-4
 #: A determinant below this many of its sigmas leaves the ranges undetermined.
 WEAK_DETERMINANT_SIGMAS = 3.0
 
@@ -203,7 +205,11 @@ class _Builder:
         v2 = np.concatenate((gauss.v2_km_s, corrected, found.v2_km_s), axis=1)
         triple_lanes = lanes.take(np.tile(np.arange(m), 3))
         placed = positions(triple_lanes, ranges)
-        r, v = propagate(placed[1].T, v2.T, ranges[1] * lines.per_c, self.gm)
+        delay = ranges[1] * lines.per_c
+        r, v, self.stm = short_partials(placed[1].T, v2.T, delay, self.gm)
+        pace = self.gm * delay**2 / norm(placed[1]) ** 3
+        if not (pace < _SHORT**2).all():
+            r, v = propagate(placed[1].T, v2.T, delay, self.gm)
         self.ranges, self.v2, self.placed = (
             ranges.reshape(3, 3, m),
             v2.reshape(3, 3, m),
@@ -211,7 +217,8 @@ class _Builder:
         )
         self.states = np.concatenate((r, v), axis=1).reshape(3, m, 6)
         # One pass of light time is enough: what a range error leaves is v/c times the miss it goes with.
-        seen = look(geometry(triple_lanes), ranges, v2)
+        self.geo = geometry(triple_lanes)
+        self.seen = seen = look(self.geo, ranges, v2)
         self.miss = seen.miss_rad.reshape(3, 3, m)
         self.miss[:, 2] = found.miss_rad
         self.q, self.excess2 = periapsis(placed[1, :, 2 * m :], found.v2_km_s, self.gm)
@@ -333,10 +340,9 @@ class _Builder:
         if self.covariance is None or not self.converged.any():
             return [None] * m, [float("nan")] * m
         found, lanes = self.orbits.refined, self.orbits.lines
-        d_range, d_r, d_v = angle_map(lanes, found.range_km, found.v2_km_s)
-        r2 = self.placed[1, :, 2, :].T
-        delay = found.range_km[1] * self.lines.per_c
-        r, v, stm = short_partials(r2, found.v2_km_s.T, delay, self.gm)
+        d_range, d_r, d_v = angle_map(lanes, found.range_km, *last_lanes(self.geo, self.seen, 2 * m))
+        r, v = self.states[2, :, :3], self.states[2, :, 3:]
+        stm = self.stm[2 * m :]
         at_emission = np.concatenate((d_r, d_v), axis=1).transpose(2, 1, 0)
         pull = -self.gm * r / np.sum(r * r, axis=1, keepdims=True) ** 1.5
         # A longer range makes the light leave earlier: the step to the reception time grows with it.
@@ -346,7 +352,7 @@ class _Builder:
         for line in range(3):
             block[2 * line : 2 * line + 2, 2 * line : 2 * line + 2] = self.covariance[line]
         full = jacobian @ block @ jacobian.transpose(0, 2, 1)
-        sigma = np.sqrt(np.einsum("am,ab,bm->m", d_range, block, d_range))
+        sigma = np.sqrt(np.add.reduce(d_range * (block @ d_range), axis=0))
         covariances = [0.5 * (full[k] + full[k].T) if self.converged[k] else None for k in range(m)]
         return covariances, [float(sigma[k]) if self.converged[k] else float("nan") for k in range(m)]
 

@@ -13,7 +13,8 @@ Source: Curtis, *Orbital Mechanics for Engineering Students*, section 5.10, algo
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import NamedTuple
+from math import sqrt
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -21,6 +22,8 @@ from numpy.typing import ArrayLike
 from firstarc.preliminary.lines_of_sight import Array, Lines, cross, dot
 
 _EPS = float(np.finfo(float).eps)
+#: Up to this many lanes plain floats are quicker than arrays.
+_FEW = 6
 
 
 class RangePolynomial(NamedTuple):
@@ -69,13 +72,16 @@ def range_polynomial(lines: Lines) -> RangePolynomial:
 
 
 def _safe_halley(
-    derivatives: Callable[..., tuple[Array, Array, Array]],
+    derivatives: Callable[..., tuple[Any, Any, Any]],
     coefficients: tuple[Array, ...],
     low: Array,
     high: Array,
     rising: Array,
 ) -> Array:
     """Halley's iteration inside brackets of monotone lanes, else the geometric middle (low > 0)."""
+    if low.size <= _FEW:
+        lanes_of = zip(*(k.tolist() for k in (low, high, rising, *coefficients)), strict=True)
+        return np.array([_safe_halley_alone(derivatives, *lane) for lane in lanes_of])
     out = np.sqrt(low * high)
     lanes = np.arange(out.size)
     x = out.copy()
@@ -102,7 +108,30 @@ def _safe_halley(
     return out
 
 
-def _octic(x: Array, a: Array, b: Array, c: Array) -> tuple[Array, Array, Array]:
+def _safe_halley_alone(
+    derivatives: Callable[..., tuple[Any, Any, Any]], low: float, high: float, rising: bool, *given: float
+) -> float:
+    """The same iteration for one lane in plain floats: quicker for a few, and the same to the last bit."""
+    x = sqrt(low * high)
+    for _ in range(200):
+        value, slope, curve = derivatives(x, *given)
+        if value == 0.0 or not low < high:
+            return x
+        if (value < 0.0) == rising:
+            low = x
+        else:
+            high = x
+        bottom = slope * slope - 0.5 * value * curve
+        following = x - value * slope / bottom if bottom != 0.0 else low
+        if not low < following < high:
+            following = sqrt(low * high)
+        if not abs(following - x) > 1e-9 * x:
+            return following
+        x = following
+    return x
+
+
+def _octic(x: Any, a: Any, b: Any, c: Any) -> tuple[Any, Any, Any]:
     square = x * x
     cube = square * x
     return (
@@ -112,7 +141,7 @@ def _octic(x: Array, a: Array, b: Array, c: Array) -> tuple[Array, Array, Array]
     )
 
 
-def _quintic(x: Array, a: Array, b: Array) -> tuple[Array, Array, Array]:
+def _quintic(x: Any, a: Any, b: Any) -> tuple[Any, Any, Any]:
     square = x * x
     cube = square * x
     return (

@@ -62,7 +62,7 @@ def herrick_gibbs(r_km: ArrayLike, t_s: ArrayLike, gm_km3_s2: float) -> HerrickG
     --------
     >>> r = [[7000.0, -450.0, 0.0], [7014.4, 0.0, 0.0], [7000.0, 450.0, 0.0]]
     >>> [round(float(x), 4) for x in herrick_gibbs(r, [0.0, 60.0, 120.0], 398600.0).v2_km_s]
-    [0.0, 7.5043, 0.0]
+    [0.0, 7.5052, 0.0]
     """
     r, single = rows_to_lanes(r_km)
     times = np.asarray(t_s, dtype=float)

@@ -27,10 +27,10 @@ def dot(a: Array, b: Array) -> Array:
 
 
 def cross(a: Array, b: Array) -> Array:
-    """Vector products of component-first vectors of equal shape."""
+    """Vector products of component-first vectors."""
     ax, ay, az = a[..., 0, :], a[..., 1, :], a[..., 2, :]
     bx, by, bz = b[..., 0, :], b[..., 1, :], b[..., 2, :]
-    out = np.empty(np.broadcast_shapes(a.shape, b.shape))
+    out = np.empty(a.shape if a.shape == b.shape else np.broadcast(a, b).shape)
     out[..., 0, :] = ay * bz - az * by
     out[..., 1, :] = az * bx - ax * bz
     out[..., 2, :] = ax * by - ay * bx

@@ -119,7 +119,7 @@ class Geometry(NamedTuple):
     gm: float
     per_c: float
 
-    def take(self, lanes: Array) -> Geometry:
+    def take(self, lanes: Array | slice) -> Geometry:
         parts = {name: part[..., lanes] for name, part in self._asdict().items() if name not in ("gm", "per_c")}
         return self._replace(**parts)
 
@@ -310,7 +310,7 @@ def _refine(lines: Lines, range_km: Array, v2_km_s: Array, keep_history: bool, i
     out_range, out_v, out_miss = np.array(range_km, float), np.array(v2_km_s, float), np.full((3, m), np.nan)
     done_at = np.zeros(m, dtype=int)
     history: list[HistoryRow] = []
-    lanes = np.arange(m)
+    lanes: Array | slice = slice(None)
     geo = geometry(lines)
     ranges, v2 = out_range.copy(), out_v.copy()
     now = look(geo, ranges, v2)
@@ -327,7 +327,8 @@ def _refine(lines: Lines, range_km: Array, v2_km_s: Array, keep_history: bool, i
             break
         if np.count_nonzero(going) < _WORTH_LEAVING * going.size and going.size > 8:
             keep = np.flatnonzero(going)
-            lanes, shrink, merit, going, far = lanes[keep], shrink[keep], merit[keep], going[keep], far[keep]
+            lanes = keep if isinstance(lanes, slice) else lanes[keep]
+            shrink, merit, going, far = shrink[keep], merit[keep], going[keep], far[keep]
             ranges, v2, geo, now = ranges[:, keep], v2[:, keep], geo.take(keep), _take(now, keep)
             step = None
         if step is None:
@@ -371,7 +372,7 @@ def _refine(lines: Lines, range_km: Array, v2_km_s: Array, keep_history: bool, i
     return Refined(out_range, out_v, out_miss, converged, done_at, tuple(history))
 
 
-def _take(seen: Look, lanes: Array) -> Look:
+def _take(seen: Look, lanes: Array | slice) -> Look:
     u, fg = Universal(*(k[..., lanes] for k in seen.u)), tuple(k[..., lanes] for k in seen.fg)
     parts = {name: part[..., lanes] for name, part in seen._asdict().items() if name not in ("u", "fg")}
     return Look(**parts, u=u, fg=fg)  # type: ignore[arg-type]
@@ -387,15 +388,24 @@ def _merged(mask: Array, new: Look, old: Look) -> Look:
     return Look(**parts, u=u, fg=fg)  # type: ignore[arg-type]
 
 
-def angle_map(lines: Lines, range_km: Array, v2_km_s: Array) -> tuple[Array, Array, Array]:
+def last_lanes(geo: Geometry, seen: Look, begin: int) -> tuple[Geometry, Look]:
+    """The lanes from ``begin`` on, as views."""
+    lanes = slice(begin, None)
+    return geo.take(lanes), _take(seen, lanes)
+
+
+def angle_map(lines: Lines, range_km: Array, geo: Geometry, seen: Look) -> tuple[Array, Array, Array]:
     """First-order effect of the six angles on the orbit through the lines.
 
     Parameters
     ----------
     lines : Lines
     range_km : ndarray, shape (3, m)
-    v2_km_s : ndarray, shape (3, m)
-        The converged orbit.
+        Slant ranges of the converged orbit.
+    geo : Geometry
+        Of the lines.
+    seen : Look
+        The converged orbit seen at the outer lines.
 
     Returns
     -------
@@ -407,8 +417,6 @@ def angle_map(lines: Lines, range_km: Array, v2_km_s: Array) -> tuple[Array, Arr
         Partials of the middle velocity.
     """
     with np.errstate(all="ignore"):
-        geo = geometry(lines)
-        seen = look(geo, range_km, v2_km_s)
         system = partials(geo, seen)
         kappa, rows, slope = _eliminated(system)
         axes = tangent_frame(lines.unit[1])[:2]
@@ -421,7 +429,7 @@ def angle_map(lines: Lines, range_km: Array, v2_km_s: Array) -> tuple[Array, Arr
             # Turning the middle line displaces the middle position.
             shift = axes[axis] * range_km[1]
             effect = (
-                system.along_v * dot(v2_km_s, shift)
+                system.along_v * dot(seen.v2, shift)
                 + system.along_r * dot(seen.r2, shift)
                 + seen.fg[0] * dot(geo.frame, shift)
             )

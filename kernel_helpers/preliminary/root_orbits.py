@@ -28,7 +28,7 @@ LOOP_PASSES = 12
 SCAN = np.array([0.03, 0.08, 0.2, 0.4, 0.7, 1.0, 1.5, 2.5, 5.0, 10.0])
 #: gm t^2 / r^3 of the arc above which the truncated series may have lost a pair of roots (arc of about 8
 #: deg).
-LONG_ARC = 0.02
+LONG_ARC = 0.002
 SCAN_ITERATIONS = 12
 #: A perigee this little below the surface is kept: a grazing orbit, not an impossible one.
 GRAZING_KM = 100.0
@@ -107,6 +107,13 @@ def solve_roots(
     orbits : RootOrbits
         m roots, by triple and ascending root.
     """
+    with np.errstate(all="ignore"):
+        return _solve_roots(lines, body_radius_km, excess_limit_km_s, keep_history, thorough)
+
+
+def _solve_roots(
+    lines: Lines, body_radius_km: float, excess_limit_km_s: float, keep_history: bool, thorough: bool
+) -> tuple[Array, RangePolynomial, RootOrbits]:
     codes = screen(lines)
     poly = range_polynomial(lines)
     codes = np.where((codes == Outcome.CONVERGED) & coplanar(lines, poly), Outcome.COPLANAR_LINES, codes)
@@ -168,7 +175,8 @@ def _doubtful(
         if not thorough:
             return np.flatnonzero(tried & none)
         turn = np.sqrt(-0.45 * poly.a)
-        wave = (poly.b > 0.0) & (8.0 * turn**5 + 6.0 * poly.a * turn**3 + 3.0 * poly.b < 0.0)
+        # A wave of the polynomial, or nearly one: where its quintic dips below 0.6 of its value at zero.
+        wave = (poly.b > 0.0) & (8.0 * turn**5 + 6.0 * poly.a * turn**3 + 1.2 * poly.b < 0.0)
         shortest = np.where(np.isnan(roots[:, 0]), turn, roots[:, 0])
         arc = lines.gm_km3_s2 * (lines.t_s[2] - lines.t_s[0]) ** 2 / shortest**3
         lost = wave & np.isnan(roots[:, 2]) & (arc > LONG_ARC)

@@ -154,7 +154,7 @@ def _followed_root(poly: RangePolynomial, start: Array) -> Array:
     """Newton on the octic from a neighbouring root; lanes scaled by the start."""
     a, b, c = poly.a / start**2, poly.b / start**5, poly.c / start**8
     y = np.ones_like(start)
-    for _ in range(5):
+    for _ in range(3):
         square = y * y
         cube = square * y
         value = ((square + a) * cube + b) * cube + c
@@ -182,8 +182,9 @@ def angle_noise(lines: Lines, root_km: Array, covariance: Array) -> tuple[Array,
         count = root_km.size
         lanes = np.tile(np.arange(12), count)
         poly = range_polynomial(turned)
-        turned = turned.take(lanes)
-        poly = RangePolynomial(*(part[..., lanes] for part in poly))
+        if count > 1:
+            turned = turned.take(lanes)
+            poly = RangePolynomial(*(part[..., lanes] for part in poly))
         gauss = gauss_estimate(turned, poly, _followed_root(poly, np.repeat(root_km, 12)))
         emission = turned.t_s - gauss.range_km * turned.per_c
         out = []

@@ -9,7 +9,7 @@ Conventions where an element is undefined:
 which is
   tan(nu/2) + tan(nu/2)^3 / 3 (Barker);
 * hyperbola: a negative, mean anomaly sqrt(gm / \\|a\\|^3) (t - T), no period (NaN);
-* rectilinear motion (no angular momentum) has no elements: NaN.
+* rectilinear motion (no angular momentum) has only a and a period; a state that is not finite has nothing (NaN).
 
 The mean anomaly lies in [0, 2 pi) on an ellipse and carries the sign of t - T on open orbits.
 """
@@ -90,10 +90,11 @@ def elements_from_state(r_km: ArrayLike, v_km_s: ArrayLike, gm_km3_s2: ArrayLike
     with np.errstate(all="ignore"):
         radius = np.sqrt(np.sum(r * r, axis=-1))
         rv = np.sum(r * v, axis=-1)
-        beta = 2.0 * gm / radius - np.sum(v * v, axis=-1)
+        finite = np.isfinite(radius) & np.isfinite(rv)
+        beta = np.where(finite, 2.0 * gm / radius - np.sum(v * v, axis=-1), np.nan)
         h = np.cross(r, v)
         h_size = np.sqrt(np.sum(h * h, axis=-1))
-        h_size = np.where(h_size > 0.0, h_size, np.nan)
+        h_size = np.where(finite & (h_size > 0.0), h_size, np.nan)
         w = h / h_size[..., None]
         p = h_size**2 / gm
         ecos = p / radius - 1.0

@@ -41,7 +41,8 @@ _SERIES = np.array([[(-1.0) ** n / _FACTORIAL[k + 2 * n] for n in range(_TERMS)]
 
 def _series(x: Array, count: int) -> Array:
     """c2, c3 (count 2) or c2 to c5 (count 4) by their power series, |x| < 1; shape (count, *x.shape)."""
-    powers = np.empty((_TERMS, x.size))
+    # A lone lane would be summed pairwise, in another order than one among many: give it company.
+    powers = np.empty((_TERMS, 2 if x.size == 1 else x.size))
     powers[0] = 1.0
     powers[1] = x.reshape(-1)
     powers[2] = powers[1] * powers[1]
@@ -49,7 +50,7 @@ def _series(x: Array, count: int) -> Array:
     powers[5:9] = powers[1:5] * powers[4]
     # Not a matrix product: its rounding may depend on where in the array a lane stands.
     summed: Array = np.add.reduce(_SERIES[:count] * powers, axis=1)
-    return summed.reshape(count, *x.shape)
+    return summed[:, : x.size].reshape(count, *x.shape)
 
 
 def stumpff(x: ArrayLike) -> tuple[Array, Array, Array, Array]:
@@ -121,13 +122,19 @@ class Universal(NamedTuple):
     r: Array
 
 
-def _first_guess(r0: Array, eta: Array, beta: Array, dt: Array, gm: Array, low: Array, high: Array) -> Array:
-    """Start of the iteration for dt >= 0: a series on short steps, anomalies on long ones."""
+def _near_guess(r0: Array, eta: Array, beta: Array, dt: Array, gm: Array) -> tuple[Array, Array]:
+    """s from a series in dt >= 0, and the mask of lanes whose step is too long for it."""
     u = dt / r0
     w = 0.5 * eta * u / r0
     s = u * (1.0 - w * (1.0 - 2.0 * w))
+    return s, ~((np.abs(w) < 0.3) & (np.abs(beta) * u * u < 2.25) & (gm * u * u < r0))
+
+
+def _first_guess(
+    s: Array, far: Array, r0: Array, eta: Array, beta: Array, dt: Array, gm: Array, low: Array, high: Array
+) -> Array:
+    """Start of the iteration for dt >= 0: the series where it holds, anomalies elsewhere."""
     root = np.sqrt(np.abs(beta))
-    far = ~((np.abs(w) < 0.3) & (root * u < 1.5) & (gm * u * u < r0))
     if far.any():
         cos_part, sin_part = 1.0 - r0 * beta / gm, eta * root / gm
         # Ellipse: Danby's E = M + 0.85 e sign(sin M) (1987, Celest. Mech. 40, 303).
@@ -182,6 +189,11 @@ def solve_universal(
             low, high = np.zeros_like(dt), np.full(dt.shape, np.inf)
             near = _iterate(s, low, high, r0_km, eta, beta_km2_s2, dt, gm)
             return Universal(near.s * sign, near.g0, near.g1 * sign, near.g2, near.g3 * sign, near.r)
+        s, far = _near_guess(r0_km, eta, beta_km2_s2, dt, gm)
+        if not far.any():
+            # Short steps: the series is close, a bracket would only be a guard.
+            near = _iterate(s, np.zeros_like(dt), np.full(dt.shape, np.inf), r0_km, eta, beta_km2_s2, dt, gm)
+            return Universal(near.s * sign, near.g0, near.g1 * sign, near.g2, near.g3 * sign, near.r)
         root = np.sqrt(np.abs(beta_km2_s2))
         closed = beta_km2_s2 > 0.0
         turn = np.where(closed, 2.0 * np.pi / root, np.inf)
@@ -191,15 +203,18 @@ def solve_universal(
         many = bool(whole.any())
         if many:
             dt = np.where(whole > 0.0, dt - whole * period, dt)
+            s, far = _near_guess(r0_km, eta, beta_km2_s2, dt, gm)
         # h^2 = r^2 v^2 - (r.v)^2, q = p / (1 + e).
         p = (r0_km * (2.0 * gm - beta_km2_s2 * r0_km) - eta * eta) / gm
         e = np.sqrt(np.maximum(1.0 - p * beta_km2_s2 / gm, 0.0))
         q = p / (1.0 + e)
         high = np.where(q > 0.0, dt / q * (1.0 + 1e-12), np.inf)
         high = np.minimum(high, np.where(closed, turn * (1.0 + 1e-12), _MAX_HYPERBOLIC / root))
+        # Lanes of short steps go the same way as if they were alone.
+        high = np.where(far, high, np.inf)
         low = np.zeros_like(dt)
-        s = _first_guess(r0_km, eta, beta_km2_s2, dt, gm, low, high)
-        s = np.where(np.isfinite(dt), s, np.nan)
+        s = _first_guess(s, far, r0_km, eta, beta_km2_s2, dt, gm, low, high)
+        s = np.where(np.isfinite(dt) & np.isfinite(beta_km2_s2) & np.isfinite(eta), s, np.nan)
         found = _iterate(s, low, high, r0_km, eta, beta_km2_s2, dt, gm)
         s = found.s + whole * np.where(closed, turn, 0.0) if many else found.s
         g3 = found.g3
@@ -288,6 +303,7 @@ def _prepared(
     gm_rows = np.broadcast_to(gm_rows, shape)
     with np.errstate(all="ignore"):
         radius = np.sqrt(np.add.reduce(r * r, axis=-1))
+        radius = np.where(np.isfinite(radius), radius, np.nan)
         beta = 2.0 * gm_rows / radius - np.add.reduce(v * v, axis=-1)
     return r, v, dt, gm_rows, radius, beta
 

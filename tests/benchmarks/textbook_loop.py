@@ -47,7 +47,7 @@ def f_and_g(x, dt, r0, alpha, mu):
     return 1.0 - x * x / r0 * stumpff_c(z), dt - x**3 / sqrt(mu) * stumpff_s(z)
 
 
-def solve(los, observer, t, mu, tolerance=1e-12, passes=200):
+def solve(los, observer, t, mu, tolerance=1e-10, passes=200):
     """(root, positions (3, 3), middle velocity) of every root with positive ranges that converges."""
     l1, l2, l3 = los
     tau1, tau3 = t[0] - t[1], t[2] - t[1]

@@ -200,8 +200,11 @@ def test_hostile_text_in_a_file_stays_text(run_notebook, lab):
     hostile = "<img src=x onerror=window.pwned=1>"
     rows = "\n".join(
         f"2026-04-17T{time}Z,{ra},{dec},1,BRN,{hostile}"
-        for time, ra, dec in (("20:52:12.41", 136.17858, 10.82425), ("21:23:27.30", 160.88996, 8.31817),
-                              ("21:14:09.95", 155.66958, 9.21811))
+        for time, ra, dec in (
+            ("20:52:12.41", 136.17858, 10.82425),
+            ("21:23:27.30", 160.88996, 8.31817),
+            ("21:14:09.95", 155.66958, 9.21811),
+        )
     )
     (lab.folder / "hostile.csv").write_text("time_utc,ra_deg,dec_deg,sigma_arcsec,station,object\n" + rows + "\n")
     name = lab.write(
@@ -249,13 +252,9 @@ def test_the_same_desk_in_two_cells_stays_one(run_notebook, lab):
     notebook = run_notebook(name, desks=3)
     notebook.desk(0).locator('[data-fa="pick-2"]').click()
     settle(notebook)
-    first, second = (
-        notebook.desk(index).locator('[data-fa="headline"]').inner_text() for index in (0, 1)
-    )
+    first, second = (notebook.desk(index).locator('[data-fa="headline"]').inner_text() for index in (0, 1))
     assert first == second
     assert notebook.python("answer = 2 in desk.pick") is True
-    assert notebook.python("answer = list(other.pick)") == notebook.python(
-        "answer = list(fa.Desk(other.obs).pick)"
-    )
+    assert notebook.python("answer = list(other.pick)") == notebook.python("answer = list(fa.Desk(other.obs).pick)")
     ids = notebook.page.evaluate("() => [...document.querySelectorAll('.fa [id]')].map((e) => e.id)")
     assert len(ids) == len(set(ids))

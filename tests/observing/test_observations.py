@@ -187,7 +187,7 @@ def test_text_and_html_say_the_same(obs: fa.Observations) -> None:
     )
     many = fa.load(file_of(long), center="sun")
     assert "20 rows between are not shown." in repr(many)
-    assert "Linc" in repr(obs[0]) and "row 0" in repr(obs[0])
+    assert "Linc" in repr(obs[0]) and "row 1" in repr(obs[0])
 
 
 def test_several_objects() -> None:
@@ -214,13 +214,13 @@ def warned(text: str, words: str, **arguments: object) -> None:
 
 def test_equal_times_and_disorder() -> None:
     twice = PSV.replace("07:30:00.000", "07:00:00.000")
-    warned(twice, "rows 0 and 1 (line 7, line 8) have the same time and station, 2020-09-05T07:00:00.000Z")
+    warned(twice, "rows 1 and 2 (line 7, line 8) have the same time and station, 2020-09-05T07:00:00.000Z")
     obs = fa.load(file_of(twice))
     assert obs.without([1]).warnings == ()
     back = PSV.replace("07:30:00.000", "06:30:00.000")
     warned(
         back,
-        "not in order of time (row 1, line 8, is earlier than the row above it); the order of the input is kept",
+        "not in order of time (row 2, line 8, is earlier than the row above it); the order of the input is kept",
     )
     assert fa.load(file_of(back)).sight_lines.t_s[1] < fa.load(file_of(back)).sight_lines.t_s[0]
 
@@ -228,7 +228,7 @@ def test_equal_times_and_disorder() -> None:
 def test_an_object_below_the_horizon() -> None:
     """-66 deg as seen from +33.8 deg culminates 9.8 deg below the horizon."""
     text = PSV.replace("+6.672609", "-66.000000")
-    warned(text, "row 1 (line 8): the object is", center="sun")
+    warned(text, "row 2 (line 8): the object is", center="sun")
     warned(text, "below the horizon of station 704 Lincoln Laboratory ETS, New Mexico", center="sun")
     obs = fa.load(file_of(PSV))
     assert not any("horizon" in w for w in obs.warnings)
@@ -256,7 +256,7 @@ def test_times_that_the_tables_do_not_reach() -> None:
 
 
 def test_obs_time_without_its_z() -> None:
-    warned(PSV.replace("07:30:00.000Z", "07:30:00.000 "), "obsTime of row 1 lacks its Z and was read as UTC")
+    warned(PSV.replace("07:30:00.000Z", "07:30:00.000 "), "obsTime of row 2 lacks its Z and was read as UTC")
 
 
 def test_a_time_error_that_outweighs_the_angle_error() -> None:

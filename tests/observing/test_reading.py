@@ -64,7 +64,7 @@ def test_several_keyword_records_with_other_columns() -> None:
     assert (obs[3].ra_deg, obs[3].dec_deg) == (27.2583, 6.6743)
     assert obs.source.header[-1] == "! mpcCode 568"
     assert obs.table["remarks"][3] == "a <b>remark</b>" and obs.table["mag"][3] == "20.1"
-    assert any("row 3: 1.5″ taken (CCD, no star catalogue named" in w for w in obs.warnings)
+    assert any("row 4: 1.5″ taken (CCD, no star catalogue named" in w for w in obs.warnings)
 
 
 def test_rows_of_other_kinds_are_counted() -> None:
@@ -99,7 +99,7 @@ def test_default_sigma_carries_the_rounding_of_the_written_digits() -> None:
     text = "trkSub|mode|stn|obsTime|ra|dec|astCat\na|CCD|704|2020-09-05T07:00:00Z|27.2549|6.6720|Gaia2\n"
     obs = fa.load(file_of(text), center="sun")
     assert obs.records.sigma_dec_arcsec[0] == pytest.approx(np.hypot(1.0, 0.36 / np.sqrt(12.0)))
-    assert any("row 0: 1″ taken" in w and "Vereš" in w for w in obs.warnings)
+    assert any("row 1: 1″ taken" in w and "Vereš" in w for w in obs.warnings)
 
 
 def test_roving_stations_get_names_and_letters() -> None:
@@ -217,7 +217,7 @@ def test_dataframe() -> None:
         fa.load(frame)
     frame["station"] = "704"
     frame.loc[1, "ra_deg"] = None
-    with pytest.raises(fa.InputError, match="row 1, field ra_deg: has no right ascension"):
+    with pytest.raises(fa.InputError, match="row 2, field ra_deg: has no right ascension"):
         fa.load(frame)
 
 

@@ -54,17 +54,13 @@ def test_csv_text_loads_back_to_the_same_numbers(many: list[tuple]) -> None:
     obs = fa.load(io.StringIO(out.getvalue()), center="earth")
     back = fa.load(io.StringIO(obs.to_csv_text()), center="earth")
     assert back.sight_lines == obs.sight_lines
-    assert back.records.same_as(obs.records) or [s.code for s in back.stations] == [
-        s.code for s in obs.stations
-    ]
+    assert back.records.same_as(obs.records) or [s.code for s in back.stations] == [s.code for s in obs.stations]
     assert back.object_name == obs.object_name
     assert fa.load(io.StringIO(back.to_csv_text()), center="earth").records.same_as(back.records)
 
 
 BASES = (PSV, ROVING, CSV)
-junk = st.text(
-    st.sampled_from("|,;#!\n\r\t \"'0123456789.+-:TZabcdefrasnobTime247NaN<>&é\u2028\ufeff\0"), max_size=6
-)
+junk = st.text(st.sampled_from("|,;#!\n\r\t \"'0123456789.+-:TZabcdefrasnobTime247NaN<>&é\u2028\ufeff\0"), max_size=6)
 
 
 @settings(max_examples=300)
@@ -74,9 +70,7 @@ junk = st.text(
 )
 @example(0, [(0.0, 400, "")])
 @example(2, [(0.9, 0, '"')])
-def test_damaged_text_gives_observations_or_a_clear_error(
-    base: int, wounds: list[tuple[float, int, str]]
-) -> None:
+def test_damaged_text_gives_observations_or_a_clear_error(base: int, wounds: list[tuple[float, int, str]]) -> None:
     text = BASES[base]
     for place, length, put in wounds:
         at = int(place * len(text))

@@ -76,9 +76,7 @@ def test_time_of_flight_on_an_ellipse():
 
 
 def solved(r0, vr0, alpha, dt, gm) -> Universal:
-    return solve_universal(
-        np.array([r0]), np.array([r0 * vr0]), np.array([alpha * gm]), np.array([dt]), np.array([gm])
-    )
+    return solve_universal(np.array([r0]), np.array([r0 * vr0]), np.array([alpha * gm]), np.array([dt]), np.array([gm]))
 
 
 def test_universal_anomaly_on_a_hyperbola():

@@ -19,12 +19,9 @@ from firstarc.widgets.figures import (
     Root,
     RowMark,
     ScaleMemory,
-    SpaceOrbit,
-    SpaceRow,
     Track,
     convergence,
     margin_bar,
-    orbit_space,
     residuals,
     root_function,
     sky_track,
@@ -48,9 +45,7 @@ def items_of(figure: dict[str, Any], kind: str, css: str | None = None) -> list[
     return [item for item in figure["items"] if item[0] == kind and (css is None or item[1] == css)]
 
 
-def text_boxes(
-    figure: dict[str, Any], css: str | None = None
-) -> list[tuple[float, float, float, float, str]]:
+def text_boxes(figure: dict[str, Any], css: str | None = None) -> list[tuple[float, float, float, float, str]]:
     out = []
     for _, cls, x, y, anchor, text in items_of(figure, "text", css):
         width = text_width(text, "strong" in cls)
@@ -163,6 +158,11 @@ def test_clipped_lines_keep_exactly_the_length_inside(points: list[tuple[float, 
     assert drawn == pytest.approx(expected, abs=0.03 * len(points))
 
 
+def test_a_line_that_leaves_and_comes_back_is_cut_in_the_middle() -> None:
+    line = np.array([[0, 0], [0, 6], [0, 0.0]])
+    assert [piece.tolist() for piece in clipped(line, (-5, -5, 5, 5))] == [[[0, 0], [0, 5]], [[0, 5], [0, 0]]]
+
+
 def test_a_line_is_broken_where_it_has_no_value() -> None:
     line = np.array([[0, 0], [1, 0], [np.nan, np.nan], [2, 0], [3, 0.0]])
     assert [piece.tolist() for piece in clipped(line, (-5, -5, 5, 5))] == [[[0, 0], [1, 0]], [[2, 0], [3, 0]]]
@@ -258,9 +258,7 @@ def test_without_an_orbit_there_are_no_marks(sample: Any) -> None:
 
 
 def test_large_residuals_are_read_in_degrees() -> None:
-    figure = residuals(
-        row_marks(5), np.full((5, 2), 7200.0 * 9), np.ones((5, 2)), frame=FrameWriter(), width=480
-    )
+    figure = residuals(row_marks(5), np.full((5, 2), 7200.0 * 9), np.ones((5, 2)), frame=FrameWriter(), width=480)
     texts = [item[5] for item in items_of(figure, "text")]
     assert "Dec, °" in texts
     ticks = [float(text) for text in texts if re.fullmatch(r"\+\d+", text)]
@@ -297,9 +295,7 @@ def test_ticks_of_residuals_stay_while_dragging(sample: Any) -> None:
     memory = ScaleMemory()
 
     def ticks(factor: float) -> list[str]:
-        figure = residuals(
-            sample.rows, sample.oc * factor, sample.sigma, frame=FrameWriter(), width=480, memory=memory
-        )
+        figure = residuals(sample.rows, sample.oc * factor, sample.sigma, frame=FrameWriter(), width=480, memory=memory)
         return [item[5] for item in items_of(figure, "text", "t") if item[4] == "end" and item[5] != "row"]
 
     rest = ticks(1.0)
@@ -316,9 +312,7 @@ def test_ticks_of_residuals_stay_while_dragging(sample: Any) -> None:
 
 
 def test_right_ascension_increases_to_the_left_and_declination_upward(sample: Any) -> None:
-    figure = sky_track(
-        sample.rows, sample.ra_dec_deg, sample.oc, sample.tracks(), frame=FrameWriter(), width=366
-    )
+    figure = sky_track(sample.rows, sample.ra_dec_deg, sample.oc, sample.tracks(), frame=FrameWriter(), width=366)
     xy = np.array([mark[3:5] for mark in items_of(figure, "mark")])
     ra, dec = sample.ra_dec_deg.T
     assert np.corrcoef(ra, xy[:, 0])[0, 1] == pytest.approx(-1.0, abs=1e-5)
@@ -348,12 +342,9 @@ def test_numbers_and_names_on_the_sky_keep_clear_of_each_other(n: int, span: flo
     places = np.column_stack([(359.9 + span * x) % 360.0, -30 + 0.4 * span * x * x])
     fine = np.linspace(-1.1, 1.1, 120)
     tracks = [
-        Track(f"S{k}", SHAPES[k], (359.9 + span * fine) % 360.0, -30 + 0.4 * span * fine**2, 10, 110)
-        for k in range(2)
+        Track(f"S{k}", SHAPES[k], (359.9 + span * fine) % 360.0, -30 + 0.4 * span * fine**2, 10, 110) for k in range(2)
     ]
-    figure = sky_track(
-        row_marks(n, 2), places, rng.normal(size=(n, 2)), tracks, frame=FrameWriter(), width=366
-    )
+    figure = sky_track(row_marks(n, 2), places, rng.normal(size=(n, 2)), tracks, frame=FrameWriter(), width=366)
     boxes = text_boxes(figure)
     assert overlapping(boxes) == []
     assert all(left >= -1 and right <= 367 and top >= 0 and low <= 245 for left, top, right, low, _ in boxes)
@@ -515,108 +506,3 @@ def test_all_margins_share_one_log_scale() -> None:
     assert np.diff(x) == pytest.approx([25.55] * 3, abs=0.1)
     assert items_of(margin_bar(None), "mark") == []
     assert len(margin_bar(1e9)["items"]) > len(margin_bar(10.0)["items"])
-
-
-# ---- orbit in space
-
-
-def _project(figure: dict[str, Any], points: np.ndarray) -> np.ndarray:
-    """The projection that the schema states, written out independently of the package."""
-    ra, dec = math.radians(figure["view"]["ra_deg"]), math.radians(figure["view"]["dec_deg"])
-    v = np.array([math.cos(dec) * math.cos(ra), math.cos(dec) * math.sin(ra), math.sin(dec)])
-    right = np.array([-math.sin(ra), math.cos(ra), 0.0])
-    up = np.cross(v, right)
-    k = (min(figure["width"], figure["height"] - 24) / 2 - 14) / figure["extent"]
-    q = np.asarray(points) - np.asarray(figure["middle"])
-    return np.c_[figure["width"] / 2 + k * q @ right, (figure["height"] - 24) / 2 - k * q @ up]
-
-
-def test_the_whole_orbit_fits_the_default_view_and_is_seen_well(sample: Any) -> None:
-    frame = FrameWriter()
-    figure = orbit_space(
-        sample.orbit(),
-        sample.space_rows(),
-        center="earth",
-        unit="km",
-        body_radius=6378.137,
-        frame=frame,
-        width=366,
-    )
-    assert figure is not None
-    xy = _project(figure, sample.orbit().points)
-    assert (xy >= 0).all() and (xy[:, 0] <= 366).all() and (xy[:, 1] <= figure["height"] - 24).all()
-    # The picture shows the ellipse open, not edge-on.
-    x, y = xy.T
-    area = 0.5 * abs(float(np.sum(x[:-1] * np.diff(y) - y[:-1] * np.diff(x))))
-    true_axes = 24518.0, 24518.0 * math.sqrt(1 - 0.69999**2)
-    k = (min(366, figure["height"] - 24) / 2 - 14) / figure["extent"]
-    assert area > 0.5 * math.pi * true_axes[0] * true_axes[1] * k * k
-    words = [mark["text"] for mark in figure["marks"]]
-    assert "perigee" in words and "apogee" in words
-    assert [word for word in words if word.isdigit()] == ["3", "5", "8"]
-
-
-def test_an_open_orbit_is_cut_and_has_no_apoapsis() -> None:
-    anomaly = np.radians(np.linspace(-130, 130, 400))
-    r = 1.0 * 2.2 / (1 + 1.2 * np.cos(anomaly))
-    points = np.c_[r * np.cos(anomaly), r * np.sin(anomaly), 0.3 * r * np.sin(anomaly)]
-    rows = [
-        SpaceRow(mark, points[195 + 5 * i], np.array([1.0, 0.1 * i, 0.0]))
-        for i, mark in enumerate(row_marks(3))
-    ]
-    frame = FrameWriter()
-    orbit = SpaceOrbit(points, periapsis=points[200])
-    figure = orbit_space(orbit, rows, center="sun", unit="au", body_radius=0.00465, frame=frame, width=366)
-    assert figure is not None
-    line = next(line for line in figure["lines"] if line["cls"] == "cv now thin")
-    drawn = points_of(frame.to_bytes(), line["offset"], line["points"], 3)
-    farthest_seen = max(float(np.linalg.norm([row.position, row.observer], axis=1).max()) for row in rows)
-    assert np.linalg.norm(drawn, axis=1).max() <= 2.5 * farthest_seen * 1.001
-    words = {mark["text"] for mark in figure["marks"]}
-    assert "perihelion" in words and "aphelion" not in words
-    assert "outer part cut" in figure["note"]
-    assert "below 1 px" in figure["note"]
-
-
-def test_view_and_scale_stay_while_dragging(sample: Any) -> None:
-    memory = ScaleMemory()
-
-    def view(turn_deg: float) -> tuple[Any, ...]:
-        c, s = math.cos(math.radians(turn_deg)), math.sin(math.radians(turn_deg))
-        turn = np.array([[c, -s, 0], [s, c, 0], [0, 0, 1.0]])
-        orbit = SpaceOrbit(sample.orbit().points @ turn.T, apoapsis=np.zeros(3))
-        figure = orbit_space(
-            orbit, sample.space_rows(), center="earth", unit="km", body_radius=6378.137, frame=FrameWriter(),
-            width=366, memory=memory,
-        )  # fmt: skip
-        assert figure is not None
-        return figure["view"], figure["extent"], figure["middle"]
-
-    rest = view(0.0)
-    memory.held = True
-    assert view(3.0) == rest and view(-6.0) == rest
-    memory.held = False
-    # At rest the scale follows, the direction only for a clearly better one.
-    assert view(3.0)[0] == rest[0] and view(3.0)[1:] != rest[1:]
-    assert view(90.0)[0] != rest[0]
-
-
-@pytest.mark.parametrize("inclination", [0.0, 23.4, 63.4, 90.0, 116.0])
-def test_every_inclination_gets_a_view_with_a_north(sample: Any, inclination: float) -> None:
-    turn = math.radians(inclination - 24.6)
-    m = np.array([[1, 0, 0], [0, math.cos(turn), -math.sin(turn)], [0, math.sin(turn), math.cos(turn)]])
-    orbit = SpaceOrbit(sample.orbit().points @ m.T, apoapsis=np.zeros(3))
-    figure = orbit_space(
-        orbit, [], center="earth", unit="km", body_radius=6378.137, frame=FrameWriter(), width=300
-    )
-    assert figure is not None
-    assert -90.0 < figure["view"]["dec_deg"] < 90.0
-    xy = _project(figure, orbit.points)
-    assert (xy >= 0).all() and (xy[:, 0] <= 300).all()
-
-
-def test_no_orbit_gives_no_figure() -> None:
-    assert (
-        orbit_space(None, [], center="earth", unit="km", body_radius=1.0, frame=FrameWriter(), width=366)
-        is None
-    )

@@ -36,7 +36,7 @@ def clipped(points: Array, box: tuple[float, float, float, float]) -> list[Array
     index = np.flatnonzero(shown)
     if not len(index):
         return []
-    if len(index) == len(a) and t0[0] == 0.0 and t1[-1] == 1.0:
+    if len(index) == len(a) and (t0 == 0.0).all() and (t1 == 1.0).all():
         return [points]
     start, end = a[index] + t0[index, None] * d[index], a[index] + t1[index, None] * d[index]
     joined = (np.diff(index) == 1) & (t1[index[:-1]] == 1.0) & (t0[index[1:]] == 0.0)

@@ -7,6 +7,7 @@ from typing import Any
 
 from firstarc.constants import AU_KM
 from firstarc.determination.stages import Candidate
+from firstarc.pipeline import METHODS
 from firstarc.report.rounding import DASH, fixed, sigma_decimals, significant
 
 from .snapshot import Snapshot, text
@@ -27,7 +28,13 @@ def candidate_table(snap: Snapshot) -> dict[str, Any]:
     ]
     candidates = () if snap.preliminary is None else snap.preliminary.candidates
     rows = [candidate_row(snap, candidate, 1.0 if earth else 1.0 / AU_KM) for candidate in candidates]
-    return {"note": note(snap), "head": head, "rows": rows}
+    return {
+        "note": note(snap),
+        "methods": [{"key": key, "label": label} for key, label in METHODS.items()],
+        "method": snap.method,
+        "head": head,
+        "rows": rows,
+    }
 
 
 def note(snap: Snapshot) -> str:

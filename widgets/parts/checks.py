@@ -62,7 +62,9 @@ def determinant_check(snap: Snapshot) -> dict[str, Any] | None:
     pre = snap.preliminary
     if pre is None or not math.isfinite(pre.determinant):
         return None
-    margin = abs(pre.determinant) / pre.determinant_sigma / DETERMINANT_LIMIT
+    # three times the same line: the determinant is zero, and so is its sigma
+    sigma = pre.determinant_sigma
+    margin = abs(pre.determinant) / sigma / DETERMINANT_LIMIT if sigma > 0.0 else 0.0
     holds = margin >= 1.0
     size = scientific(pre.determinant, 3).replace("-", MINUS)
     words = f"determinant {size}, σ {scientific(pre.determinant_sigma)}, limit {fixed(DETERMINANT_LIMIT, 0)} σ"

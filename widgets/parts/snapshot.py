@@ -55,6 +55,7 @@ class Snapshot:
     recorded : Candidate or None
         The candidate that the same choices give without what-if.
     what_if : tuple of WhatIf
+    method : str
     failure : Failure or None
     """
 
@@ -70,6 +71,7 @@ class Snapshot:
     recorded: Candidate | None
     recorded_residuals: NDArray[np.float64] | None
     what_if: tuple[Any, ...]
+    method: str
     failure: Failure | None
 
     @property

@@ -19,6 +19,8 @@ export interface Settings {
   row: number;
   /** Root letter of the chosen candidate, or null for the best. */
   candidate: string | null;
+  /** Method of preliminary determination. */
+  method: string;
   /** True while a slider is held: the kernel may leave out what is slow, and scales hold still. */
   held: boolean;
   /** Inner widths of the figure slots, px. */
@@ -87,6 +89,9 @@ export interface Slider {
 
 export interface CandidateTable {
   note: string;
+  /** Methods to choose from, and the one in force. */
+  methods: { key: string; label: string }[];
+  method: string;
   head: Line[];
   rows: CandidateRow[];
 }

@@ -15,17 +15,22 @@ interface RowNodes {
 /** Every root has a row and a letter; the admissible ones form a radio group, the others keep their reason. */
 export function candidates(context: Context, rootFunction: HTMLElement): View {
   const note = make("span", { class: "u" });
+  const method = make("select", { "aria-label": "method of preliminary determination", "data-fa": "method" });
+  const options: HTMLOptionElement[] = [];
   const head = make("tr");
   const heads: HTMLTableCellElement[] = [];
   const body = make("tbody", { role: "radiogroup", "aria-label": "candidate" });
   const table = make(
     "table", { class: "cnd", "data-fa": "candidates" },
-    make("caption", {}, "Candidates ", note), make("thead", {}, head), body,
+    make("caption", {}, make("label", { class: "inl mth" }, "method ", method), "Candidates ", note), make("thead", {}, head), body,
   );
   const root = make("div", { class: "band b1" }, make("div", { class: "scr" }, table), rootFunction);
   const rows: RowNodes[] = [];
   const trs: HTMLTableRowElement[] = [];
 
+  context.cleanUp.on(method, "change", () => {
+    context.sync.change(() => ({ method: method.value, candidate: null }), true);
+  });
   context.cleanUp.on(body, "change", (event) => {
     const radio = event.target;
     if (radio instanceof HTMLInputElement && radio.checked) {
@@ -81,6 +86,15 @@ export function candidates(context: Context, rootFunction: HTMLElement): View {
     paint({ scene, settings, settled }) {
       const table_ = scene.candidates;
       setText(note, table_.note);
+      keepChildren(method, options, table_.methods.length, () => make("option"));
+      table_.methods.forEach(({ key, label }, index) => {
+        const option = options[index];
+        if (!option) return;
+        if (option.value !== key) option.value = key;
+        setText(option, label);
+      });
+      const inForce = settled ? table_.method : settings.method;
+      if (method.value !== inForce) method.value = inForce;
       keepChildren(head, heads, table_.head.length, (index) =>
         make("th", { scope: "col", class: index === 0 ? null : "r" }));
       table_.head.forEach((line, index) => {
