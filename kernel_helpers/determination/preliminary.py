@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ..errors import UsageError
-from ..report.rounding import DASH, fixed, scientific, significant
+from ..report.rounding import DASH, fixed, scientific, significant, with_sigma
 from ..results import Result, Status
 from .stages import Candidate
 
@@ -88,18 +88,18 @@ class Preliminary(Result):
         ]
         unit, scale = ("km", 1.0) if self.center == "earth" else ("au", 149597870.7)
         if self.candidates:
-            digits = 6
             table = [["root", f"r {unit}", f"slant ranges {unit}", f"a {unit}", "e", "rms others ″", "verdict"]]
             for c in self.candidates:
-                elements = c.elements
+                elements, sigmas = c.elements, c.sigmas
+                sigma = c.sigma_range_km / scale
                 table.append(
                     [
                         c.letter,
-                        significant(c.root_km / scale, digits),
-                        " · ".join(significant(x / scale, digits) for x in c.ranges_km),
-                        DASH if elements is None else significant(elements.a_km / scale, digits),
-                        DASH if elements is None else fixed(elements.e, 4),
-                        significant(c.rms_others_arcsec, 3),
+                        significant(c.root_km / scale, 5),
+                        " · ".join(to_sigma(x / scale, sigma) for x in c.ranges_km),
+                        DASH if elements is None else to_sigma(elements.a_km / scale, sigmas and sigmas.a_km / scale),
+                        DASH if elements is None else to_sigma(elements.e, sigmas and sigmas.e),
+                        DASH if elements is None else significant(c.rms_others_arcsec, 3),
                         ("admissible: " if c.admissible else "rejected: ") + c.reason,
                     ]
                 )
@@ -107,3 +107,8 @@ class Preliminary(Result):
         if self.best is not None:
             lines += self.best.report_lines()
         return lines
+
+
+def to_sigma(value: float, sigma: float | None) -> str:
+    """A value to the place of its sigma, four significant digits without one."""
+    return with_sigma(value, sigma).partition(" ±")[0]

@@ -92,10 +92,12 @@ class CorrectedStage(Stage):
     def report_lines(self) -> list[Any]:
         lines = super().report_lines()
         first, second = (fixed(angle, 2) for angle in self.separations_deg)
-        lines.insert(1, self.rule_reason)
-        lines.insert(
-            2, f"separations {first}° and {second}°, out of one plane by {scientific(abs(self.coplanarity_deg))}°"
-        )
+        out_of_plane = abs(self.coplanarity_deg)
+        # positions that were computed in one plane leave nothing but rounding
+        size = "less than 10⁻⁹°" if out_of_plane < 1e-9 else f"{scientific(out_of_plane)}°"
+        lines.insert(1, f"separations {first}° and {second}°, out of one plane by {size}")
+        if self.rule_reason != self.status.sentence:
+            lines.insert(1, self.rule_reason)
         return lines
 
 

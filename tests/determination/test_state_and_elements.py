@@ -37,7 +37,9 @@ def test_bad_arguments_are_named(changed: dict[str, Any], words: str) -> None:
     assert words in str(caught.value)
 
 
-@pytest.mark.parametrize("bad", [dict(r_km=["a", "b", "c"]), dict(v_km_s="fast"), dict(r_km=None), dict(r_km=[[1.0], 2])])
+@pytest.mark.parametrize(
+    "bad", [dict(r_km=["a", "b", "c"]), dict(v_km_s="fast"), dict(r_km=None), dict(r_km=[[1.0], 2])]
+)
 def test_vectors_that_are_no_numbers_are_misuse(bad: dict[str, Any]) -> None:
     with pytest.raises(fa.UsageError, match="must be three finite numbers"):
         fa.State(**{"r_km": R, "v_km_s": V, "epoch": EPOCH, "center": "earth", **bad})
@@ -45,7 +47,7 @@ def test_vectors_that_are_no_numbers_are_misuse(bad: dict[str, Any]) -> None:
 
 def test_unknown_forces_are_named() -> None:
     state = fa.State(R, V, EPOCH, "earth")
-    with pytest.raises(fa.UsageError, match='forces must be None or "two-body", got \'J2\''):
+    with pytest.raises(fa.UsageError, match="forces must be None or \"two-body\", got 'J2'"):
         state.propagated(EPOCH, forces="J2")
     assert state.propagated(EPOCH, forces="two-body") == state.propagated(EPOCH)
 

@@ -71,7 +71,9 @@ def test_runs_and_proves_that_it_is_repeated(path: Path, tmp_path: Path) -> None
     assert "exec(desk.code()" in code[-1].source
     printed = next(cell for cell in code if cell.source == "print(desk.code())")
     ast.parse(output_text(printed))
-    desks = [o.data for cell in code for o in cell.outputs if "application/vnd.jupyter.widget-view+json" in o.get("data", {})]
+    desks = [
+        o.data for cell in code for o in cell.outputs if "application/vnd.jupyter.widget-view+json" in o.get("data", {})
+    ]
     assert len(desks) >= 2, "an Earth and a Sun Desk"
     for data in desks:
         assert "<table" in data["text/html"] and "Determined." in data["text/html"]

@@ -7,7 +7,7 @@ import importlib.util
 import sys
 from collections.abc import Sequence
 from dataclasses import replace
-from functools import lru_cache
+from functools import cache, lru_cache
 from pathlib import Path
 from typing import Any
 
@@ -30,7 +30,7 @@ SUN = ("sh-comet-parabolic", "sh-jupiter-month", "sh-mars-week", "sh-venus-week"
 NOISES = ("n0", "s03", "s1", "s5")
 
 
-@lru_cache(maxsize=None)
+@cache
 def case(name: str) -> dict[str, Any]:
     return tomllib.loads((CASES / f"{name}.toml").read_text(encoding="utf-8"))
 
@@ -40,7 +40,7 @@ def csv_rows(name: str) -> list[dict[str, str]]:
         return list(csv.DictReader(file))
 
 
-@lru_cache(maxsize=None)
+@cache
 def loaded(name: str, noise: str = "") -> fa.Observations:
     return fa.load(CASES / (f"{name}_{noise}.psv" if noise else f"{name}.psv"))
 

@@ -35,9 +35,9 @@ def test_numpy_picks_are_taken(satellite: fa.Observations) -> None:
 
 
 def test_misuse_is_named(satellite: fa.Observations) -> None:
-    with pytest.raises(fa.UsageError, match='method must be "gauss", got \'laplace\''):
-        fa.preliminary(satellite, method="laplace")
-    with pytest.raises(fa.UsageError, match="obs must be Observations from firstarc.load, got str"):
+    with pytest.raises(fa.UsageError, match=r"method must be .*gauss.*, got 'guess'"):
+        fa.preliminary(satellite, method="guess")
+    with pytest.raises(fa.UsageError, match=r"obs must be Observations from firstarc\.load, got str"):
         fa.preliminary("night.psv")  # type: ignore[arg-type]
     for obs in (satellite[[0, 1]], satellite[[3]]):
         with pytest.raises(fa.UsageError, match=f"needs three observations, got {len(obs)}"):

@@ -18,8 +18,8 @@ from pipeline.shared_cases import ROOT, frame_of, invented, loaded, sightings_sc
 
 HOSTILE_NAMES = [
     "plain",
-    "it's \"quoted\"",
-    'three """ quotes \'\'\' both',
+    'it\'s "quoted"',
+    "three \"\"\" quotes ''' both",
     "back\\slash \\n \\x41 \\",
     "{braces} {0} %s %(x)s ${y}",
     "two\nlines",

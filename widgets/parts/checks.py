@@ -123,4 +123,5 @@ def residual_checks(chosen: Candidate) -> list[dict[str, Any]]:
     if chance > 1.0 - CHANCE_LIMIT:
         words = f"{head}, chance {fixed(chance, 4)}: smaller than the stated sigmas allow"
         return [check("Residuals below σ", words, (1.0 - chance) / CHANCE_LIMIT, fails=False)]
-    return [check("Residuals match σ", f"{head}, chance {fixed(chance, 2)}, {limit}", chance / CHANCE_LIMIT, fails=False)]
+    words = f"{head}, chance {fixed(chance, 2)}, {limit}"
+    return [check("Residuals match σ", words, chance / CHANCE_LIMIT, fails=False)]

@@ -11,6 +11,7 @@ from firstarc.determination.stages import Candidate, element_rows, sigma_rows
 from firstarc.report.rounding import DASH, fixed, significant, with_sigma
 
 from .checks import CHANCE_LIMIT
+from .observation_table import rows_out
 from .snapshot import LARGE_CHI, Snapshot, text
 from .what_if_panel import what_if_words
 
@@ -38,7 +39,7 @@ def failed(snap: Snapshot) -> list[list[Any]]:
                 ", or ",
                 text(f"take row {number} out of the pick", act={"do": "drop_from_pick", "row": failure.drop_row}),
             ]
-    third = what_if_line(snap) if snap.what_if else ["The previous orbit is withdrawn: it belonged to other settings."]
+    third = what_if_line(snap) if snap.what_if else ["No what-if: these are the recorded observations."]
     return [[text("No preliminary orbit.", b=1), " ", sentence], second, third]
 
 
@@ -109,8 +110,7 @@ def stated_sigmas(snap: Snapshot) -> str:
 
 def basis(snap: Snapshot, chosen: Candidate) -> list[Any]:
     """What the orbit rests on and how the other rows agree with it."""
-    out = [snap.numbers[i] for i in range(len(snap.obs)) if not snap.used[i]]
-    gone = "" if not out else f" Row{'s' if len(out) > 1 else ''} {', '.join(map(str, out))} out."
+    gone = f" {rows_out(snap)}." if not snap.used.all() else ""
     if chosen.dof_others == 0:
         return [f"Orbit through rows {snap.pick_numbers} alone: three directions leave no redundancy.{gone}"]
     others = int(snap.used.sum()) - 3

@@ -100,10 +100,17 @@ def foot(snap: Snapshot) -> str:
         parts.append(f"Pick {snap.pick_numbers}: lines of sight {angle(first)} and {angle(second)} apart.")
     else:
         parts.append(f"Pick {snap.pick_numbers}.")
-    out = [str(snap.numbers[i]) for i in range(len(snap.obs)) if not snap.used[i]]
-    if out:
-        parts.append(f"Row{'s' if len(out) > 1 else ''} {', '.join(out)} out, taken out by hand.")
+    if not snap.used.all():
+        parts.append(f"{rows_out(snap)}, taken out by hand.")
     return " ".join(parts)
+
+
+def rows_out(snap: Snapshot) -> str:
+    """Which rows are out: ``Row 7 out``, ``Rows 3, 7 out``; many are counted, not listed."""
+    out = [str(snap.numbers[i]) for i in range(len(snap.obs)) if not snap.used[i]]
+    if len(out) > 8:
+        return f"{len(out)} rows out"
+    return f"Row{'s' if len(out) > 1 else ''} {', '.join(out)} out"
 
 
 def angle(degrees: float) -> str:
