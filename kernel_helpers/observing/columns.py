@@ -10,6 +10,8 @@ Tables (CSV, ECSV, DataFrame, astropy Table):
 ``sigma_dec_arcsec``       sigma of Dec, arcsec
 ``sigma_corr``             correlation of the two
 ``sigma_time_s``           sigma of the time, s
+``range_km``               measured slant range (one way, the light path from the object), km; may be empty
+``sigma_range_km``         its sigma, km; needed wherever a range is given
 ``station``                MPC code, or a name from ``stations=``, or the name of a place given in the row
 ``lon_deg`` ``lat_deg``    east longitude and geodetic latitude of the place, degrees (WGS 84)
 ``height_m``               height of the place above the ellipsoid, m

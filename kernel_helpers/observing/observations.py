@@ -302,6 +302,9 @@ class Observations(Shown):
             Column([s.height_m for s in sites], "height", unit=u.m),
             Column([d.best for d in r.designations], "object"),
         ]
+        if np.isfinite(r.range_km).any():
+            columns.append(Column(r.range_km, "range", unit=u.km, description="measured slant range"))
+            columns.append(Column(r.sigma_range_km, "sigma_range", unit=u.km))
         taken = {c.name for c in columns}
         for name, texts in r.others:
             shown = name if name not in taken else f"{name} (input)"
@@ -323,6 +326,8 @@ class Observations(Shown):
             ("sigma_dec_arcsec", [repr(float(v)) for v in r.sigma_dec_arcsec]),
             ("sigma_corr", [repr(float(v)) if v else "" for v in r.corr]),
             ("sigma_time_s", [repr(float(v)) if v else "" for v in r.sigma_time_s]),
+            ("range_km", ["" if np.isnan(v) else repr(float(v)) for v in r.range_km]),
+            ("sigma_range_km", ["" if np.isnan(v) else repr(float(v)) for v in r.sigma_range_km]),
             ("station", [s.code for s in sites]),
             ("lon_deg", [repr(s.lon_deg) for s in sites]),
             ("lat_deg", [repr(s.lat_deg) for s in sites]),

@@ -186,6 +186,19 @@ class Reader:
         # An observer who writes no error of the time as zero states nothing.
         row.sigma_time_s = self._first_positive(row, "sigma_time_s", "rmsTime", zero=True) or 0.0
         self._precision(row)
+        self._range(row)
+
+    def _range(self, row: Row) -> None:
+        """A measured slant range; it counts only with its sigma, which nobody may guess."""
+        value = self._positive(row, "range_km")
+        sigma = self._positive(row, "sigma_range_km")
+        if value is None:
+            return
+        if sigma is None:
+            if not row.cells.get("sigma_range_km"):
+                self._bad(row, "sigma_range_km", "", "is empty beside a range", "Give the sigma of the range in km")
+            return
+        row.range_km, row.sigma_range_km = value, sigma
 
     def _precision(self, row: Row) -> None:
         """The precision group of ADES: all three or none."""
@@ -270,6 +283,8 @@ class Reader:
             sigma_dec_arcsec=sigma[:, 1].copy(),
             corr=np.array([r.corr for r in rows]),
             sigma_time_s=np.array([r.sigma_time_s for r in rows]),
+            range_km=np.array([r.range_km for r in rows]),
+            sigma_range_km=np.array([r.sigma_range_km for r in rows]),
             sigma_stated=stated,
             site_index=np.array(site_index, dtype=np.int64),
             sites=sites,

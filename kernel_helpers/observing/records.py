@@ -58,6 +58,8 @@ class Records:
         As written, on ICRF axes.
     sigma_ra_arcsec, sigma_dec_arcsec, corr, sigma_time_s : ndarray
         Sigma of RA times cos Dec and of Dec, their correlation, sigma of the time (0 when not stated).
+    range_km, sigma_range_km : ndarray
+        Measured slant range and its sigma; NaN where none was measured.
     sigma_stated : bool array
         False where a default sigma stands in.
     site_index : int array
@@ -79,6 +81,8 @@ class Records:
     sigma_dec_arcsec: NDArray[np.float64]
     corr: NDArray[np.float64]
     sigma_time_s: NDArray[np.float64]
+    range_km: NDArray[np.float64]
+    sigma_range_km: NDArray[np.float64]
     sigma_stated: NDArray[np.bool_]
     site_index: NDArray[np.int64]
     sites: tuple[Site, ...]
@@ -116,7 +120,10 @@ class Records:
         """True when every recorded value is the same."""
         for field in fields(self):
             mine, theirs = getattr(self, field.name), getattr(other, field.name)
-            same = np.array_equal(mine, theirs) if isinstance(mine, np.ndarray) else mine == theirs
+            if isinstance(mine, np.ndarray):
+                same = np.array_equal(mine, theirs, equal_nan=mine.dtype.kind == "f")
+            else:
+                same = mine == theirs
             if not same:
                 return False
         return True

@@ -22,6 +22,8 @@ class Row:
     sigma_dec: float | None = None
     corr: float = 0.0
     sigma_time_s: float = 0.0
+    range_km: float = math.nan
+    sigma_range_km: float = math.nan
     code: str = ""
     place: tuple[float, float, float] | None = None
     place_name: str = ""

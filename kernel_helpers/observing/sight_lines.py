@@ -17,6 +17,7 @@ from firstarc.errors import UsageError
 from firstarc.observing.records import Records
 from firstarc.observing.stations import Site
 from firstarc.observing.what_if import WhatIf
+from firstarc.results import same
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,6 +42,8 @@ class SightLines:
         Correlation of the two.
     sigma_time_s : ndarray, shape (n,)
         Sigma of the time tag, not part of ``sigma_rad``; 0 where not stated.
+    range_km, sigma_range_km : ndarray, shape (n,)
+        Measured slant ranges and their sigmas; NaN where none was measured.
     light_time : bool
         True when the light path is to be allowed for.
     """
@@ -53,6 +56,8 @@ class SightLines:
     sigma_rad: NDArray[np.float64]
     corr: NDArray[np.float64]
     sigma_time_s: NDArray[np.float64]
+    range_km: NDArray[np.float64]
+    sigma_range_km: NDArray[np.float64]
     light_time: bool
 
     def __post_init__(self) -> None:
@@ -71,7 +76,7 @@ class SightLines:
     def __eq__(self, other: object) -> bool:
         if not isinstance(other, SightLines):
             return NotImplemented
-        return all(np.array_equal(getattr(self, f.name), getattr(other, f.name)) for f in fields(self))
+        return all(same(getattr(self, f.name), getattr(other, f.name)) for f in fields(self))
 
     __hash__ = None  # type: ignore[assignment]
 
@@ -197,6 +202,8 @@ def sight_lines(records: Records, g: Geometry, center: str, kind: str, epoch_tdb
         sigma_rad,
         records.corr,
         records.sigma_time_s,
+        records.range_km,
+        records.sigma_range_km,
         kind != "geometric",
     )
 

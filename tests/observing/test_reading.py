@@ -234,3 +234,29 @@ def test_text_of_a_file_is_only_data() -> None:
     assert obs.object_name == evil
     assert evil in repr(obs)
     assert "<script>" not in obs._repr_html_() and "&lt;script&gt;" in obs._repr_html_()
+
+
+RANGES = """time_utc,ra_deg,dec_deg,sigma_arcsec,range_km,sigma_range_km,station
+2020-09-05T07:00:00Z,10.0,20.0,30,1500.25,0.02,704
+2020-09-05T07:01:00Z,11.0,21.0,30,,,704
+2020-09-05T07:02:00Z,12.0,22.0,30,1490.5,0.02,704
+"""
+
+
+def test_measured_ranges_are_kept_with_their_sigma() -> None:
+    obs = fa.load(file_of(RANGES), center="earth")
+    lines = obs.sight_lines
+    np.testing.assert_array_equal(lines.range_km, [1500.25, np.nan, 1490.5])
+    np.testing.assert_array_equal(lines.sigma_range_km, [0.02, np.nan, 0.02])
+    assert str(obs.table["range"].unit) == "km"
+    again = fa.load(io.StringIO(obs.to_csv_text()), center="earth")
+    assert again.sight_lines == lines
+    assert "range" not in fa.load(file_of(CSV)).table.colnames
+
+
+def test_a_range_without_its_sigma_is_refused() -> None:
+    text = RANGES.replace("1490.5,0.02", "1490.5,")
+    with pytest.raises(fa.InputError, match="line 4, field sigma_range_km: is empty beside a range"):
+        fa.load(file_of(text), center="earth")
+    with pytest.raises(fa.InputError, match="field range_km: '-3' is not a positive number"):
+        fa.load(file_of(text.replace("1500.25", "-3")), center="earth")
