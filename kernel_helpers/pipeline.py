@@ -1,112 +1,297 @@
 """The analyst's steps in one place: the only module that imports the whole way.
 
-Observations become plain arrays at the border; the numeric core turns three of them into every root's stages;
-here the results get their units, their ranking against the other observations, and their words.
+Observations become plain arrays at the border; the numeric core turns some of them into orbits, every root with
+its stages; the results get their units, their ranking against the other observations, and their words.
 """
 
 from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from .constants import ARCSEC_RAD, AU_KM, DAY_S, EARTH_RADIUS_KM, SUN_RADIUS_KM
+from .constants import ARCSEC_RAD, DAY_S
+from .determination.building import BODY_RADIUS_KM, Builder, residuals_under
 from .determination.preliminary import Preliminary
-from .determination.ranking import ranked
-from .determination.stages import Candidate, CorrectedStage, Iteration, Stage
+from .determination.ranking import contradicted, ranked
+from .determination.stages import Candidate, CorrectedStage
 from .determination.state import GM_KM3_S2, State, tdb_pair
-from .dynamics.light_time import predicted_directions, residuals_rad
 from .errors import UsageError
 from .observing.observations import Observations
 from .observing.sight_lines import SightLines
-from .preliminary.candidates import CoreCandidate, CoreGibbs, CoreStage, TripleSolution, solve_triple
+from .preliminary.candidates import solve_triple
 from .preliminary.gibbs import gibbs as gibbs_vectors_of
 from .preliminary.herrick_gibbs import herrick_gibbs
-from .preliminary.outcome import Outcome
+from .preliminary.method_orbit import MethodOrbit
+from .preliminary.methods import METHODS
 from .preliminary.pick import choose_pick
+from .preliminary.ranging import sample
 from .preliminary.rule import GIBBS, position_choice
-from .report.rounding import significant
+from .preliminary.solution import TripleSolution
 from .results import Code, Status
-from .uncertainty.consistency import agreement_of_others
 
 Array = NDArray[np.float64]
-#: Methods of preliminary determination, and what they are called.
-METHODS = {"gauss": "Gauss"}
-BODY_RADIUS_KM = {"earth": EARTH_RADIUS_KM, "sun": SUN_RADIUS_KM}
-#: Roots are named from the outermost inwards, so that a root keeps its letter while sliders move.
-LETTERS = "ABCDEFGH"
+#: An orbit is taken as it is by the automatic choice when its middle slant range is known to this part of itself ...
+SUFFICIENT_RANGE_SIGMA = 0.05
+#: ... when its determinant is this many times its sigma, and when the other observations do not contradict it.
+SUFFICIENT_DETERMINANT = 10.0
+#: Eccentricity of the method "assumed-eccentricity" where the caller names none.
+DEFAULT_ECCENTRICITY = 0.1
 
 
-def preliminary(obs: Observations, pick: Sequence[int] | None = None, method: str = "gauss") -> Preliminary:
-    """Preliminary orbits through three of the observations: every root, three stages each, ranked.
+def preliminary(
+    obs: Observations,
+    pick: Sequence[int] | None = None,
+    method: str = "gauss",
+    *,
+    eccentricity: float | None = None,
+    revolutions: int | None = None,
+) -> Preliminary:
+    """Preliminary orbits from a few of the observations: every root, stage by stage, ranked.
 
     Parameters
     ----------
     obs : Observations
     pick : sequence of three int, optional
         Positions in ``obs``, any order. Chosen by trial over many triples when left out, and the reason is given.
-    method : {"gauss"}
-        Gauss' method with Gibbs' or the Herrick-Gibbs correction, converged on the exact two-body orbit.
+    method : str
+        ``"gauss"``: Gauss' method with Gibbs' or the Herrick-Gibbs correction. ``"laplace"``, ``"double-r"``,
+        ``"two-ranges"`` (may span revolutions): other ways to the same exact orbits through the three lines.
+        ``"four-observations"``: for lines of sight in one plane. ``"circular"`` and ``"assumed-eccentricity"``: an
+        orbit of that shape for very short arcs. ``"ranging"``: a weighted sample over the admissible region.
+        ``"measured-ranges"``: Gibbs', Herrick-Gibbs or Lambert on positions with measured range. ``"auto"`` tries
+        them by geometry and reports what was tried and why.
+    eccentricity : float, optional
+        For ``"assumed-eccentricity"`` only; 0.1 when left out.
+    revolutions : int, optional
+        For ``"two-ranges"`` and ``"double-r"`` only: whole revolutions between first and last; all that the time
+        allows when left out.
 
     Returns
     -------
     Preliminary
-        Its ``status`` says when no root is admissible; rejected roots are kept with their reason.
+        Its ``status`` says when no candidate is admissible; rejected ones are kept with their reason.
 
     Raises
     ------
     UsageError
-        Fewer than three observations, a pick that is not three different positions, or an unknown method.
+        Too few observations, a pick that is not three different positions, an unknown method, or an option that
+        the method does not have.
 
     References
     ----------
-    Gauss' method in the form of Curtis, *Orbital Mechanics for Engineering Students*, section 5.10; Gibbs' in that
-    of Bate, Mueller and White 1971, section 2.5.
+    Each method's module in :mod:`firstarc.preliminary` names its source.
     """
-    if method not in METHODS:
-        raise UsageError(f"method must be one of {', '.join(map(repr, METHODS))}, got {method!r}")
     if not isinstance(obs, Observations):
         raise UsageError(f"obs must be Observations from firstarc.load, got {type(obs).__name__}")
+    if method not in METHODS:
+        raise UsageError(f"method must be one of {', '.join(map(repr, METHODS))}, got {method!r}")
+    if eccentricity is not None and method != "assumed-eccentricity":
+        raise UsageError(f'eccentricity belongs to method="assumed-eccentricity", not to {method!r}')
+    if revolutions is not None and method not in ("two-ranges", "double-r"):
+        raise UsageError(f'revolutions belongs to method="two-ranges" or "double-r", not to {method!r}')
+    if 3 <= len(obs) < METHODS[method].fewest:
+        raise UsageError(f"method {method!r} needs {METHODS[method].fewest} observations, got {len(obs)}")
+    if len(obs) < 3:
+        raise UsageError(f"a preliminary orbit needs three observations, got {len(obs)}")
     if pick is None:
         chosen, reason = default_pick(obs)
     else:
         chosen, reason = _checked_pick(pick, obs), "given by the caller."
-    lines = obs.sight_lines
-    order = sorted(chosen, key=lambda i: (lines.t_s[i], i))
-    chosen = (order[0], order[1], order[2])
-    rows = list(chosen)
-    gm = GM_KM3_S2[obs.center]
-    solution = solve_triple(
-        lines.los[rows],
-        lines.observer_km[rows],
-        lines.t_s[rows],
-        gm,
-        center_velocity_km_s=lines.center_velocity_km_s[rows],
-        light_time=lines.light_time,
-        sigma_rad=lines.sigma_rad[rows],
-        correlation=lines.corr[rows],
-        body_radius_km=BODY_RADIUS_KM[obs.center],
-    )
-    candidates = _candidates(solution, obs, lines, chosen, gm)
-    polynomial = solution.polynomial
-    return Preliminary(
-        pick=chosen,
-        pick_rows=(int(obs.rows[chosen[0]]) + 1, int(obs.rows[chosen[1]]) + 1, int(obs.rows[chosen[2]]) + 1),
-        pick_reason=reason,
-        method=method,
-        status=solution.status,
-        candidates=candidates,
-        roots_km=solution.roots_km,
-        coefficients=(polynomial.a_km2, polynomial.b_km5, polynomial.c_km8),
-        unit_km=polynomial.unit_km,
-        determinant=solution.determinant,
-        determinant_sigma=solution.determinant_sigma,
-        separations_deg=(float(solution.separations_deg[0]), float(solution.separations_deg[1])),
-        center=obs.center,
-    )
+    work = _Work(obs, _in_time_order(chosen, obs), reason)
+    if method == "auto":
+        _automatic(work)
+    elif method == "gauss":
+        work.gauss()
+    else:
+        work.run(method, eccentricity=eccentricity, revolutions=revolutions)
+    return work.result(method)
+
+
+def _in_time_order(rows: tuple[int, int, int], obs: Observations) -> tuple[int, int, int]:
+    first, middle, last = sorted(rows, key=lambda i: (obs.sight_lines.t_s[i], i))
+    return first, middle, last
+
+
+@dataclass
+class _Work:
+    """One preliminary determination while it is being made."""
+
+    obs: Observations
+    pick: tuple[int, int, int]
+    pick_reason: str
+    candidates: list[Candidate] = field(default_factory=list)
+    statuses: list[Status] = field(default_factory=list)
+    tried: list[tuple[str, str]] = field(default_factory=list)
+    sample: Any = None
+
+    def __post_init__(self) -> None:
+        lines, rows = self.lines, list(self.pick)
+        self.builder = Builder(self.obs, self.pick)
+        # Gauss' polynomial and the determinant describe the geometry of the pick whatever method is used.
+        self.triple: TripleSolution = solve_triple(
+            lines.los[rows],
+            lines.observer_km[rows],
+            lines.t_s[rows],
+            GM_KM3_S2[self.obs.center],
+            center_velocity_km_s=lines.center_velocity_km_s[rows],
+            light_time=lines.light_time,
+            sigma_rad=lines.sigma_rad[rows],
+            correlation=lines.corr[rows],
+            body_radius_km=BODY_RADIUS_KM[self.obs.center],
+        )
+
+    @property
+    def lines(self) -> SightLines:
+        return self.obs.sight_lines
+
+    @property
+    def determinant_in_sigmas(self) -> float:
+        return abs(self.triple.determinant) / self.triple.determinant_sigma if self.triple.determinant_sigma else 0.0
+
+    def gauss(self) -> None:
+        """Gauss' method."""
+        self.candidates += self.builder.of_gauss(self.triple)
+        self.statuses.append(self.triple.status)
+
+    def rows_for(self, method: str) -> list[int]:
+        """The observations that a method is given."""
+        takes = METHODS[method].takes
+        if takes == "all":
+            return list(range(len(self.obs)))
+        if takes == "ranges":
+            return [row for row in self.pick if math.isfinite(self.lines.range_km[row])]
+        return list(self.pick)
+
+    def run(self, method: str, *, eccentricity: float | None = None, revolutions: int | None = None) -> None:
+        """Another method; what it finds joins the candidates."""
+        lines, rows, entry = self.lines, self.rows_for(method), METHODS[method]
+        if len(rows) < entry.fewest:
+            raise UsageError(
+                f"method {method!r} needs {entry.fewest} observations with a measured range in the pick, "
+                f"got {len(rows)}"
+            )
+        options: dict[str, Any] = {}
+        if method == "assumed-eccentricity":
+            options["eccentricity"] = DEFAULT_ECCENTRICITY if eccentricity is None else eccentricity
+        if revolutions is not None:
+            options["revolutions"] = revolutions
+        if method in ("laplace", "double-r", "two-ranges"):
+            options.update(middle=1, correlation=lines.corr[rows])
+        if method == "measured-ranges":
+            options.update(range_km=lines.range_km[rows], range_sigma_km=lines.sigma_range_km[rows])
+        given: dict[str, Any] = dict(
+            center_velocity_km_s=lines.center_velocity_km_s[rows],
+            light_time=lines.light_time,
+            sigma_rad=lines.sigma_rad[rows],
+            body_radius_km=BODY_RADIUS_KM[self.obs.center],
+        )
+        arguments = (lines.los[rows], lines.observer_km[rows], lines.t_s[rows], GM_KM3_S2[self.obs.center])
+        orbits: tuple[MethodOrbit, ...]
+        if method == "ranging":
+            self.sample = sample(*arguments, **given)
+            orbits = (self.sample.best,)
+        else:
+            assert entry.solve is not None  # every method but Gauss' and the automatic choice has one
+            orbits = entry.solve(*arguments, **given, **options)
+        found = self.builder.of_method(method, orbits, rows)
+        self.candidates += found
+        self.statuses.append(_status_of(entry.label, orbits))
+
+    def result(self, method: str) -> Preliminary:
+        """Everything found so far, ranked."""
+        obs, solution = self.obs, self.triple
+        polynomial = solution.polynomial
+        candidates = ranked(self.candidates)
+        return Preliminary(
+            pick=self.pick,
+            pick_rows=(
+                int(obs.rows[self.pick[0]]) + 1,
+                int(obs.rows[self.pick[1]]) + 1,
+                int(obs.rows[self.pick[2]]) + 1,
+            ),
+            pick_reason=self.pick_reason,
+            method=method,
+            tried=tuple(self.tried),
+            status=_overall(self.statuses, candidates),
+            candidates=candidates,
+            sample=self.sample,
+            roots_km=solution.roots_km,
+            coefficients=(polynomial.a_km2, polynomial.b_km5, polynomial.c_km8),
+            unit_km=polynomial.unit_km,
+            determinant=solution.determinant,
+            determinant_sigma=solution.determinant_sigma,
+            separations_deg=(float(solution.separations_deg[0]), float(solution.separations_deg[1])),
+            center=obs.center,
+        )
+
+
+def _status_of(label: str, orbits: Sequence[MethodOrbit]) -> Status:
+    good = sum(one.admissible for one in orbits)
+    if good:
+        return Status(Code.CONVERGED, f"{good} admissible orbit{'s' if good != 1 else ''} by {label}.")
+    reasons = "; ".join(dict.fromkeys(one.status.sentence.rstrip(".") for one in orbits)) or "nothing found"
+    code = orbits[0].status.code if len(orbits) == 1 else Code.NO_CANDIDATE
+    return Status(code, f"No admissible orbit by {label}: {reasons}.")
+
+
+def _overall(statuses: Sequence[Status], candidates: Sequence[Candidate]) -> Status:
+    if len(statuses) == 1:
+        return statuses[0]
+    good = sum(c.admissible for c in candidates)
+    if good:
+        orbits = f"{good} admissible orbit{'s' if good != 1 else ''}"
+        return Status(Code.CONVERGED, f"{orbits} among {len(candidates)} candidates.")
+    return Status(Code.NO_CANDIDATE, " ".join(status.sentence for status in statuses))
+
+
+def _automatic(work: _Work) -> None:
+    """Try methods by geometry until one suffices; each attempt is noted with its reason and its outcome."""
+
+    def attempt(method: str, why: str) -> None:
+        before = len(work.candidates)
+        if method == "gauss":
+            work.gauss()
+        else:
+            work.run(method)
+        new = work.candidates[before:]
+        good = sum(c.admissible for c in new)
+        found = f"{good} of {len(new)} admissible" if new else "no orbit"
+        work.tried.append((METHODS[method].label, f"{why}: {found}."))
+
+    if len(work.rows_for("measured-ranges")) >= METHODS["measured-ranges"].fewest:
+        attempt("measured-ranges", "ranges were measured in the pick")
+        if _suffices(work):
+            return
+    attempt("gauss", "three directions")
+    if _suffices(work):
+        return
+    weak = work.determinant_in_sigmas < SUFFICIENT_DETERMINANT
+    if weak and len(work.obs) >= METHODS["four-observations"].fewest:
+        attempt("four-observations", f"the lines of sight are coplanar within {SUFFICIENT_DETERMINANT:.0f} sigma")
+        if _suffices(work):
+            return
+    attempt("two-ranges", "no orbit so far suffices; whole revolutions between the sightings are allowed for")
+    if _suffices(work):
+        return
+    attempt("circular", "the arc fixes no orbit by itself; a circle is the least that can be assumed")
+    attempt("ranging", "what the arc does fix: a sample over the admissible region")
+
+
+def _suffices(work: _Work) -> bool:
+    """True when a candidate without assumptions is well fixed and the other observations do not contradict it."""
+    for one in work.candidates:
+        if not one.admissible or one.method in ("circular", "assumed-eccentricity", "ranging"):
+            continue
+        sigma = one.sigma_range_km / abs(one.ranges_km[len(one.ranges_km) // 2])
+        strong = one.method != "gauss" or work.determinant_in_sigmas >= SUFFICIENT_DETERMINANT
+        if sigma <= SUFFICIENT_RANGE_SIGMA and strong and not contradicted(one):
+            return True
+    return False
 
 
 def default_pick(obs: Observations) -> tuple[tuple[int, int, int], str]:
@@ -165,163 +350,8 @@ def residuals_of(state: State, obs: Observations) -> Array:
         raise UsageError(f"the state is about the {state.center}, the observations about the {obs.center}")
     lines = obs.sight_lines
     plain = np.concatenate([state.r_km, state.v_km_s])
-    return _residuals(plain, _seconds(state.epoch_tdb, lines), lines, state.gm_km3_s2) / ARCSEC_RAD
-
-
-def _seconds(epoch_tdb: tuple[float, float], lines: SightLines) -> float:
-    return ((epoch_tdb[0] - lines.epoch_tdb[0]) + (epoch_tdb[1] - lines.epoch_tdb[1])) * DAY_S
-
-
-def _residuals(states: Array, t_state_s: Any, lines: SightLines, gm: float) -> Array:
-    predicted, _, _ = predicted_directions(
-        states, t_state_s, lines.t_s, lines.observer_km, lines.center_velocity_km_s, gm, lines.light_time
-    )
-    return residuals_rad(lines.los, predicted)
-
-
-def _candidates(
-    solution: TripleSolution, obs: Observations, lines: SightLines, pick: tuple[int, int, int], gm: float
-) -> tuple[Candidate, ...]:
-    """The core's candidates with units, residuals of all observations, letters and ranking."""
-    cores = solution.candidates
-    if not cores:
-        return ()
-    stages = [stage for core in cores for stage in (core.gauss, core.gibbs, core.converged)]
-    states = np.stack([stage.state for stage in stages])
-    residuals = _residuals(states, solution.candidates[0].gauss.t_state_s, lines, gm).reshape(len(cores), 3, -1, 2)
-    others = np.setdiff1d(np.arange(len(lines)), pick)
-    built = []
-    for k, core in enumerate(cores):
-        letter = LETTERS[len(cores) - 1 - k]  # the core lists roots from the innermost
-        built.append(_candidate(core, letter, residuals[k], obs, lines, pick, others, gm))
-    return ranked(built)
-
-
-def _candidate(
-    core: CoreCandidate,
-    letter: str,
-    residuals: Array,
-    obs: Observations,
-    lines: SightLines,
-    pick: tuple[int, int, int],
-    others: NDArray[np.int64],
-    gm: float,
-) -> Candidate:
-    epoch = (lines.epoch_tdb[0], lines.epoch_tdb[1] + core.gauss.t_state_s / DAY_S)
-    arcsec = residuals / ARCSEC_RAD
-    gauss, converged = (
-        _stage(name, stage, arcsec[i], epoch, obs.center)
-        for name, stage, i in (("Gauss estimate", core.gauss, 0), ("Converged", core.converged, 2))
-    )
-    final = core.converged
-    has_orbit = converged.state is not None
-    covariance = np.full((6, 6), np.nan) if final.covariance is None else final.covariance
-    chi2, dof, chance = agreement_of_others(
-        final.state,
-        covariance,
-        final.t_state_s,
-        residuals[2][others],
-        lines.t_s[others],
-        lines.observer_km[others],
-        lines.center_velocity_km_s[others],
-        lines.sigma_rad[others],
-        gm,
-        lines.light_time,
-    )
-    with np.errstate(invalid="ignore"):
-        chi = np.hypot(*(residuals[2] / lines.sigma_rad).T)
-    return Candidate(
-        letter=letter,
-        root_km=core.root_km,
-        admissible=core.admissible,
-        reason=_reason(core, obs, pick),
-        gauss=gauss,
-        gibbs=_corrected(core.gibbs, arcsec[1], epoch, obs.center),
-        converged=converged,
-        history=tuple(
-            Iteration(np.array(one.range_km), one.change, max(one.miss_rad) / ARCSEC_RAD) for one in final.history
-        ),
-        ranges_km=final.range_km if has_orbit else core.gauss.range_km,
-        covariance=covariance,
-        sigma_range_km=final.range2_sigma_km,
-        chi=chi,
-        rms_others_arcsec=_rms(arcsec[2][others]),
-        chi2_others=chi2,
-        dof_others=dof,
-        chance_others=chance,
-        picked=pick,
-        rows=np.asarray(obs.rows),
-        sigma_arcsec=lines.sigma_rad / ARCSEC_RAD,
-    )
-
-
-def _reason(core: CoreCandidate, obs: Observations, pick: tuple[int, int, int]) -> str:
-    """Why a root is rejected, or what is doubtful about it, in the units and row numbers of the analyst."""
-    if core.outcome is Outcome.NEGATIVE_RANGE:
-        late = bool(core.gauss.range_km[1] > 0.0)
-        ranges = core.converged.range_km if late else core.gauss.range_km
-        worst = int(np.argmin(ranges)) if late else 1
-        row = int(obs.rows[pick[worst]]) + 1
-        return f"slant range negative ({_length(float(ranges[worst]), obs.center)} at row {row})"
-    if core.outcome is Outcome.BELOW_SURFACE:
-        radius = BODY_RADIUS_KM[obs.center]
-        lowest = float(np.linalg.norm(core.converged.positions_km, axis=1).min())
-        if lowest < radius:
-            return f"{_length(radius - lowest, obs.center)} below the surface when observed"
-        word = "perigee" if obs.center == "earth" else "perihelion"
-        return f"{word} {_length(radius - core.converged.q_km, obs.center)} below the surface after convergence"
-    sentence = (core.remark if core.admissible else core.status.sentence).rstrip(".")
-    return sentence[:1].lower() + sentence[1:]
-
-
-def _length(km: float, center: str) -> str:
-    return f"{significant(km, 4)} km" if center == "earth" else f"{significant(km / AU_KM, 3)} au"
-
-
-def _rms(values: Array) -> float:
-    return float(np.sqrt(np.mean(values**2))) if values.size else math.nan
-
-
-def _state(stage: CoreStage, epoch: tuple[float, float], center: str) -> State | None:
-    if not stage.status.ok or not np.isfinite(stage.state).all():
-        return None
-    return State(stage.state[:3], stage.state[3:], epoch, center)
-
-
-def _stage(name: str, stage: CoreStage, residuals: Array, epoch: tuple[float, float], center: str) -> Stage:
-    return Stage(
-        name=name,
-        status=stage.status,
-        positions_km=stage.positions_km,
-        state=_state(stage, epoch, center),
-        miss_arcsec=stage.miss_rad / ARCSEC_RAD,
-        residuals_arcsec=residuals,
-        rms_arcsec=_rms(residuals),
-    )
-
-
-def _corrected(stage: CoreGibbs, residuals: Array, epoch: tuple[float, float], center: str) -> CorrectedStage:
-    choice = stage.choice
-    return CorrectedStage(
-        name=f"{choice.rule} correction",
-        status=stage.status,
-        positions_km=stage.positions_km,
-        state=_state(stage, epoch, center),
-        miss_arcsec=stage.miss_rad / ARCSEC_RAD,
-        residuals_arcsec=residuals,
-        rms_arcsec=_rms(residuals),
-        rule=choice.rule,
-        rule_reason=choice.reason,
-        coplanarity_deg=stage.coplanarity_deg,
-        separations_deg=(float(stage.separations_deg[0]), float(stage.separations_deg[1])),
-        n_vector=stage.n_km3,
-        d_vector=stage.d_km2,
-        s_vector=stage.s_km2,
-        predicted_error_km_s=(
-            ("Gibbs", choice.gibbs_error_km_s),
-            ("Herrick-Gibbs", choice.herrick_gibbs_error_km_s),
-        ),
-    )
+    seconds = (state.epoch_tdb[0] - lines.epoch_tdb[0]) + (state.epoch_tdb[1] - lines.epoch_tdb[1])
+    return residuals_under(plain, seconds * DAY_S, lines, state.gm_km3_s2) / ARCSEC_RAD
 
 
 def gibbs(

@@ -16,6 +16,7 @@ class Code(Enum):
     CONVERGED = "converged"
     ESTIMATED = "estimated"
     NOT_CONVERGED = "not converged"
+    CONSTRAINED = "weak directions held"
     NO_POSITIVE_ROOT = "no positive root"
     NEGATIVE_RANGE = "negative slant range"
     COPLANAR_LINES = "lines of sight coplanar"

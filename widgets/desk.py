@@ -82,7 +82,7 @@ class Desk(Scene):
         unknown = [name for name in given if name not in ("layout", "tooltip", "tabbable")]
         if unknown:
             raise UsageError(
-                f"Desk has no argument {unknown[0]!r}; it takes obs, pick, center, stations and the layout of ipywidgets"
+                f"Desk has no argument {unknown[0]!r}; it takes obs, pick, center, stations and ipywidgets' layout"
             )
         if not isinstance(obs, Observations):
             obs = load(obs, center=center, stations=stations)

@@ -56,7 +56,7 @@ class Ephemeris:
         from jplephem.spk import SPK
 
         self.name = name
-        kernel = SPK.open(path)
+        self.kernel = kernel = SPK.open(path)
         self._barycentre, self._earth, self._sun = kernel[0, 3], kernel[3, 399], kernel[0, 10]
         segments = (self._barycentre, self._earth, self._sun)
         self.first_jd = max(s.start_jd for s in segments)

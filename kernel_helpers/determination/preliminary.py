@@ -2,15 +2,19 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from ..constants import AU_KM
 from ..errors import UsageError
+from ..preliminary.methods import METHODS
 from ..report.rounding import DASH, fixed, scientific, significant, with_sigma
 from ..results import Result, Status
+from .elements import reference_axes
 from .stages import Candidate
 
 
@@ -25,7 +29,11 @@ class Preliminary(Result):
     pick_rows : tuple of int
         Rows of the loaded input, counted from 1 as in tables and in the Desk.
     pick_reason : str
-    method : {"gauss"}
+    method : str
+    tried : tuple of (str, str)
+        For ``method="auto"``: each method tried, with the reason and what it gave.
+    sample : RangingSample or None
+        Weighted orbits of the method "ranging".
     status : Status
     candidates : tuple of Candidate
         Every positive root: admissible ones first, best first; rejected ones keep their reason.
@@ -48,8 +56,10 @@ class Preliminary(Result):
     pick_rows: tuple[int, int, int]
     pick_reason: str
     method: str
+    tried: tuple[tuple[str, str], ...]
     status: Status
     candidates: tuple[Candidate, ...]
+    sample: Any
     roots_km: NDArray[np.float64]
     coefficients: tuple[float, float, float]
     unit_km: float
@@ -81,20 +91,24 @@ class Preliminary(Result):
         numbers = " · ".join(str(row) for row in self.pick_rows)
         first, second = (fixed(angle, 2) for angle in self.separations_deg)
         lines: list[Any] = [
-            f"Preliminary orbit by Gauss' method, rows {numbers} (pick={self.pick}): {self.pick_reason}",
+            f"Preliminary orbit, method {METHODS[self.method].label}, rows {numbers} (pick={self.pick}): "
+            f"{self.pick_reason}",
+            *(f"Tried {label}: {outcome}" for label, outcome in self.tried),
             str(self.status),
             f"lines of sight {first}° and {second}° apart, determinant {scientific(self.determinant)}"
             f" with sigma {scientific(self.determinant_sigma)}",
         ]
-        unit, scale = ("km", 1.0) if self.center == "earth" else ("au", 149597870.7)
+        unit, scale = ("km", 1.0) if self.center == "earth" else ("au", AU_KM)
         if self.candidates:
-            table = [["root", f"r {unit}", f"slant ranges {unit}", f"a {unit}", "e", "rms others ″", "verdict"]]
+            units = (f"r {unit}", f"slant ranges {unit}", f"a {unit}")
+            table = [["candidate", "method", *units, "e", "rms others ″", "verdict"]]
             for c in self.candidates:
                 elements, sigmas = c.elements, c.sigmas
                 sigma = c.sigma_range_km / scale
                 table.append(
                     [
                         c.letter,
+                        METHODS[c.method].label,
                         significant(c.root_km / scale, 5),
                         " · ".join(to_sigma(x / scale, sigma) for x in c.ranges_km),
                         DASH if elements is None else to_sigma(elements.a_km / scale, sigmas and sigmas.a_km / scale),
@@ -104,9 +118,25 @@ class Preliminary(Result):
                     ]
                 )
             lines.append(table)
+        if self.sample is not None:
+            lines += sample_lines(self.sample, self.center)
         if self.best is not None:
             lines += self.best.report_lines()
         return lines
+
+
+def sample_lines(sample: Any, center: str) -> list[Any]:
+    """What a weighted sample of orbits says: 5, 50 and 95 per cent of it, no orbit to use."""
+    if not np.isfinite(sample.best.state).all():
+        return [str(sample.status)]
+    summary = sample.summary(reference_axes(center))
+    unit, scale = ("km", 1.0) if center == "earth" else ("au", AU_KM)
+    names = [("a", "a_km", unit, scale), ("e", "e", "", 1.0), ("i", "i_rad", "°", math.pi / 180.0)]
+    names += [("q", "q_km", unit, scale), ("slant range", "range_km", unit, scale)]
+    rows = [["of the sample", "5 %", "50 %", "95 %", "unit"]]
+    for name, key, word, size in names:
+        rows.append([name, *(significant(float(x) / size, 3) for x in summary[key]), word])
+    return [f"{sample.status} {sample.assumption}", rows]
 
 
 def to_sigma(value: float, sigma: float | None) -> str:

@@ -132,6 +132,8 @@ class Candidate(Result):
     ----------
     letter : str
         Name of the root; A is the outermost.
+    method : str
+        The method it comes from, as given to ``preliminary``.
     root_km : float
         Distance from the centre at the middle observation, root of the eighth-degree equation.
     admissible : bool
@@ -155,10 +157,11 @@ class Candidate(Result):
         Chi-square of those observations with the orbit's own uncertainty included, its degrees of freedom and the
         probability of a larger one; NaN without other observations.
     picked : tuple of int
-        Positions of the pick in the observations.
+        Positions of the observations that the orbit was made from.
     """
 
     letter: str
+    method: str
     root_km: float
     admissible: bool
     reason: str
@@ -174,7 +177,7 @@ class Candidate(Result):
     chi2_others: float
     dof_others: int
     chance_others: float
-    picked: tuple[int, int, int]
+    picked: tuple[int, ...]
     rows: NDArray[np.int64]
     sigma_arcsec: NDArray[np.float64]
 

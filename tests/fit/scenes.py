@@ -8,7 +8,8 @@ import numpy as np
 
 from firstarc.constants import ARCSEC_RAD, AU_KM, DAY_S, GM_EARTH_KM3_S2, GM_SUN_KM3_S2
 from firstarc.dynamics.light_time import predicted_directions, tangent_axes
-from firstarc.fit.measurement_model import MeasurementModel, Measurements
+from firstarc.fit.measurement_model import MeasurementModel
+from firstarc.fit.measurements import Measurements
 from firstarc.fit.motion import TwoBody
 from firstarc.twobody.elements import state_from_elements
 from firstarc.twobody.kepler import propagate
@@ -113,3 +114,13 @@ def noisy(exact: Measurements, rng: np.random.Generator) -> Measurements:
     first, second = rng.normal(size=(2, len(exact)))
     second = exact.corr * first + np.sqrt(1.0 - exact.corr**2) * second
     return shifted(exact, np.stack((first, second), axis=1) * exact.sigma_rad)
+
+
+def with_ranges(exact: Measurements) -> Measurements:
+    """Room for ranges and range rates, all zero: the residuals are then minus what is computed."""
+    n = len(exact)
+    return replace(
+        exact,
+        range_km=np.zeros(n), sigma_range_km=np.full(n, 0.01),
+        range_rate_km_s=np.zeros(n), sigma_range_rate_km_s=np.full(n, 1e-5),
+    )  # fmt: skip

@@ -153,8 +153,8 @@ def test_ranking_has_reasons() -> None:
     assert [c.letter for c in pre.candidates] == ["B", "A", "C"]
     first, second, _ = pre.candidates
     assert first.rms_others_arcsec * 3.0 < second.rms_others_arcsec
-    assert first.reason == "the other observations fit it clearly best"
-    assert second.reason == "the other observations fit B better"
+    assert first.reason == "the other observations agree with it alone"
+    assert second.reason == "the other observations contradict it"
 
     alone = fa.preliminary(obs[[0, 3, 6]])
     first, second, _ = alone.candidates
@@ -165,7 +165,7 @@ def test_ranking_has_reasons() -> None:
     assert np.isnan(first.rms_others_arcsec) and first.dof_others == 0 and np.isnan(first.chi2_others)
 
     only = fa.preliminary(loaded("sh-leo-pass", "s1"), pick=(0, 4, 8)).best
-    assert only.reason == "the only admissible root"
+    assert only.reason == "the only admissible one"
 
 
 def test_tie_is_not_called_clear() -> None:

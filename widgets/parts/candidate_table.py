@@ -5,6 +5,8 @@ from __future__ import annotations
 import math
 from typing import Any
 
+import numpy as np
+
 from firstarc.constants import AU_KM
 from firstarc.determination.stages import Candidate
 from firstarc.pipeline import METHODS
@@ -27,14 +29,23 @@ def candidate_table(snap: Snapshot) -> dict[str, Any]:
         ["rms others ″"],
     ]
     candidates = () if snap.preliminary is None else snap.preliminary.candidates
+    if snap.method == "auto":
+        head.insert(2, ["method"])
     rows = [candidate_row(snap, candidate, 1.0 if earth else 1.0 / AU_KM) for candidate in candidates]
     return {
         "note": note(snap),
-        "methods": [{"key": key, "label": label} for key, label in METHODS.items()],
+        "methods": [{"key": key, "label": METHODS[key].label} for key in methods_for(snap)],
         "method": snap.method,
         "head": head,
         "rows": rows,
     }
+
+
+def methods_for(snap: Snapshot) -> list[str]:
+    """Methods that these observations allow."""
+    ranges = int(np.isfinite(snap.obs.sight_lines.range_km).sum())
+    count = int(snap.used.sum())
+    return [key for key, method in METHODS.items() if (ranges if method.takes == "ranges" else count) >= method.fewest]
 
 
 def note(snap: Snapshot) -> str:
@@ -42,10 +53,11 @@ def note(snap: Snapshot) -> str:
         return "none"
     count = len(snap.preliminary.candidates)
     admissible = sum(c.admissible for c in snap.preliminary.candidates)
+    noun = "positive root" if snap.method == "gauss" else "orbit"
     if not count:
-        return "no positive root"
+        return f"no {noun}"
     verdict = "none" if not admissible else str(admissible)
-    return f"{count} positive root{'s' if count != 1 else ''}, {verdict} admissible"
+    return f"{count} {noun}{'s' if count != 1 else ''}, {verdict} admissible"
 
 
 def candidate_row(snap: Snapshot, candidate: Candidate, scale: float) -> dict[str, Any]:
@@ -55,7 +67,8 @@ def candidate_row(snap: Snapshot, candidate: Candidate, scale: float) -> dict[st
     cells: list[str] = []
     if candidate.admissible and candidate.elements is not None:
         elements = candidate.elements
-        cells = [
+        cells = [METHODS[candidate.method].label] if snap.method == "auto" else []
+        cells += [
             " · ".join(fixed(r * scale, p) for r, p in zip(candidate.ranges_km, places, strict=True)),
             significant(elements.a_km * scale, 5) if math.isfinite(elements.a_km) else DASH,
             fixed(elements.e, 3),

@@ -8,6 +8,7 @@ from typing import Any
 
 from firstarc.determination.stages import Candidate
 from firstarc.report.rounding import MINUS, fixed, scientific, significant
+from firstarc.results import Code
 
 from .observation_table import angle
 from .snapshot import DETERMINED_LIMIT, Snapshot
@@ -71,8 +72,10 @@ def determinant_check(snap: Snapshot) -> dict[str, Any] | None:
     return check("Lines not coplanar" if holds else "Lines coplanar", words, margin, fails=not holds)
 
 
-def rule_check(snap: Snapshot, chosen: Candidate) -> dict[str, Any]:
+def rule_check(snap: Snapshot, chosen: Candidate) -> dict[str, Any] | None:
     stage = chosen.gibbs
+    if stage.status.code is Code.NOT_ATTEMPTED:
+        return None
     if stage.state is None:
         return check("No correction", str(stage.status), math.nan, fails=True)
     first, second = (angle(value) for value in stage.separations_deg)

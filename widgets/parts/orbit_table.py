@@ -8,6 +8,7 @@ from typing import Any
 from firstarc.determination.elements import Elements
 from firstarc.determination.stages import Candidate, element_rows, sigma_rows
 from firstarc.report.rounding import DASH, agreeing, fixed, sigma_decimals, split_point
+from firstarc.results import Code
 
 from .snapshot import Snapshot, text
 
@@ -36,7 +37,7 @@ def orbit_table(snap: Snapshot, convergence: dict[str, Any] | None) -> dict[str,
     what_if = bool(snap.what_if)
     columns = [
         {
-            "title": "Gauss estimate",
+            "title": "Gauss estimate" if chosen is None else chosen.gauss.name,
             "sub": "none" if chosen is None else f"root {chosen.letter}, row {row_number}",
             "kind": "stage",
         },
@@ -60,6 +61,8 @@ def orbit_table(snap: Snapshot, convergence: dict[str, Any] | None) -> dict[str,
 
 
 def rule_words(chosen: Candidate) -> str:
+    if chosen.gibbs.status.code is Code.NOT_ATTEMPTED:
+        return "not used"
     if chosen.gibbs.state is None:
         return "no velocity"
     return f"{chosen.gibbs.rule.replace('-', '–')} chosen"
@@ -68,6 +71,8 @@ def rule_words(chosen: Candidate) -> str:
 def passes(chosen: Candidate) -> str:
     if chosen.converged.state is None:
         return "not reached"
+    if not chosen.history:
+        return "exact" if chosen.dof_others or len(chosen.picked) == 3 else "as it stands"
     steps = max(len(chosen.history) - 1, 0)
     return f"{steps} Newton step{'s' if steps != 1 else ''}"
 

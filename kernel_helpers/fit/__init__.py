@@ -1,0 +1,1 @@
+"""The orbit over all observations: measurement model, least squares, rejection, verdicts."""
