@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from firstarc.observing.observations import Observation, Observations
     from firstarc.observing.stations import Site
     from firstarc.observing.what_if import WhatIf
-    from firstarc.pipeline import gibbs, preliminary
+    from firstarc.pipeline import fit, gibbs, preliminary
     from firstarc.preliminary.batch import solve_triples
     from firstarc.results import Status
     from firstarc.widgets.desk import Desk
@@ -32,6 +32,7 @@ _HOME = {
     "WhatIf": "firstarc.observing.what_if",
     "Site": "firstarc.observing.stations",
     "preliminary": "",
+    "fit": "",
     "gibbs": "firstarc.pipeline",
     "solve_triples": "firstarc.preliminary.batch",
     "State": "firstarc.determination.state",
@@ -52,6 +53,7 @@ __all__ = [  # noqa: RUF022 - in the order of the work
     "Site",
     "preliminary",
     "gibbs",
+    "fit",
     "solve_triples",
     "State",
     "Elements",

@@ -16,6 +16,8 @@ from numpy.typing import NDArray
 
 from .constants import ARCSEC_RAD, DAY_S
 from .determination.building import BODY_RADIUS_KM, Builder, residuals_under
+from .determination.fitting import FORCES, Forces, make_fit
+from .determination.orbit_fit import OrbitFit
 from .determination.preliminary import Preliminary
 from .determination.ranking import contradicted, ranked
 from .determination.stages import Candidate, CorrectedStage
@@ -325,6 +327,90 @@ def _checked_pick(pick: Sequence[int], obs: Observations) -> tuple[int, int, int
     if len(rows) != 3 or len(set(rows)) != 3 or not all(0 <= row < len(obs) for row in rows):
         raise UsageError(f"pick must be three different positions from 0 to {len(obs) - 1}, got {pick!r}")
     return rows[0], rows[1], rows[2]
+
+
+def fit(
+    obs: Observations,
+    start: Any = None,
+    forces: str | None = None,
+    reject: bool = True,
+    *,
+    estimate: Sequence[str] = (),
+    keep: Sequence[int] = (),
+    leave_out: Sequence[int] = (),
+    area_to_mass_m2_kg: float | None = None,
+) -> OrbitFit:
+    """The weighted least-squares orbit over all observations.
+
+    Parameters
+    ----------
+    obs : Observations
+    start : Candidate, State, Preliminary or None
+        Where to begin. A preliminary result gives all its admissible candidates; None makes one, by the automatic
+        choice of methods. The epoch of the fit is that of the (first) start.
+    forces : None, "two-body" or "full"
+        None takes the terms that move the object noticeably over the arc, and says so in ``forces_reason``. "full" is
+        the zonals to J4, Sun and Moon about the Earth, or the planets, the Moon and the Sun's relativistic term.
+    reject : bool
+        Automatic rejection and recovery of outliers (Carpino, Milani and Chesley 2003).
+    estimate : sequence of str
+        Further unknowns: ``"clock:CODE"`` (s to be added to the recorded times of a station), ``"station:CODE"``
+        (east, north, up of its place, m), ``"area-to-mass"`` (m2/kg, with solar radiation pressure).
+    keep, leave_out : sequence of int
+        Positions in ``obs`` that are always in or always out, whatever the automatic rejection finds.
+    area_to_mass_m2_kg : float, optional
+        Solar radiation pressure with this area-to-mass ratio.
+
+    Returns
+    -------
+    OrbitFit
+        ``determined`` is False when the data fix no single orbit; ``verdicts`` say why and ``sample`` holds
+        weighted orbits.
+
+    Raises
+    ------
+    UsageError
+        An argument cannot be used, the observations are too few, or nothing gives a start: its text says what to try.
+
+    References
+    ----------
+    Milani and Gronchi 2010, *Theory of Orbit Determination*; each module of :mod:`firstarc.fit` names its source.
+    """
+    if not isinstance(obs, Observations):
+        raise UsageError(f"obs must be Observations from firstarc.load, got {type(obs).__name__}")
+    if forces is not None and forces not in FORCES:
+        raise UsageError(f"forces must be None, {' or '.join(map(repr, FORCES))}, got {forces!r}")
+    if len(obs) < 3:
+        raise UsageError(f"a fit needs three observations, got {len(obs)}")
+    states, words = _starts(obs, start)
+    wanted = Forces(forces, area_to_mass_m2_kg, "area-to-mass" in estimate)
+    return make_fit(obs, states, words, wanted, reject, tuple(estimate), tuple(keep), tuple(leave_out))
+
+
+def _starts(obs: Observations, start: Any) -> tuple[list[State], str]:
+    """States to begin from, and what they are in words."""
+    if isinstance(start, State):
+        if start.center != obs.center:
+            raise UsageError(f"start is about the {start.center}, the observations about the {obs.center}")
+        return [start], "a state given by the caller"
+    if isinstance(start, Candidate):
+        if start.state is None:
+            raise UsageError(f"candidate {start.letter} has no converged orbit to start from: {start.reason}")
+        return [start.state], f"candidate {start.letter} ({METHODS[start.method].label})"
+    if start is None:
+        start = preliminary(obs)
+        if start.best is None or start.best.sigma_range_km > abs(start.best.ranges_km[1]):
+            start = preliminary(obs, pick=start.pick, method="auto")
+    if not isinstance(start, Preliminary):
+        raise UsageError(f"start must be a Candidate, State, Preliminary or None, got {type(start).__name__}")
+    good = [c for c in start.candidates if c.admissible and c.state is not None]
+    if not good:
+        raise UsageError(
+            f"no admissible preliminary orbit to start from: {start.status} Give start= a State, or other "
+            "observations."
+        )
+    letters = ", ".join(c.letter for c in good)
+    return [c.state for c in good if c.state is not None], f"every admissible candidate ({letters})"
 
 
 def residuals_of(state: State, obs: Observations) -> Array:

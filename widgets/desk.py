@@ -53,8 +53,9 @@ class Desk(Scene):
         Letter of the root chosen by hand; None takes the best. Observable, may be set.
     preliminary : Preliminary or None
         The present result; None when the settings admit none. Observable.
-    fit : None
-        Kept for the least-squares orbit over all observations; this version has none.
+    fit : OrbitFit or None
+        The least-squares orbit over all observations in use; None while a slider is held or when there is none.
+        Observable.
 
     Raises
     ------
@@ -123,6 +124,7 @@ class Desk(Scene):
             settings.pick,
             settings.candidate if by_hand else None,
             settings.method,
+            self._snapshot.fit_choices,
         )
 
     def _from_browser(self, change: Any) -> None:
@@ -180,6 +182,7 @@ class Desk(Scene):
                 self.candidate = settings.candidate
                 self.method = settings.method
                 self.preliminary = self._snapshot.preliminary
+                self.fit = self._snapshot.fit
         finally:
             self._busy = False
         self.show(scene, frame)

@@ -10,7 +10,6 @@ from numpy.typing import NDArray
 from firstarc.border.solar_system import ephemeris
 from firstarc.constants import AU_KM, DAY_S
 from firstarc.determination.elements import reference_axes
-from firstarc.determination.stages import Candidate
 from firstarc.determination.state import State
 from firstarc.dynamics.light_time import predicted_directions
 from firstarc.twobody.curve import orbit_curve
@@ -46,9 +45,9 @@ class DrawnOrbits:
             self._earth = (epoch_tdb, (found.earth_km - found.sun_km) / AU_KM)
         return self._earth[1]
 
-    def tracks(self, snap: Snapshot, candidate: Candidate | None, obs: Any) -> list[Track]:
+    def tracks(self, snap: Snapshot, state: State | None, obs: Any) -> list[Track]:
         """Predicted directions along each run of sightings of one station, and a little beyond."""
-        if candidate is None or (state := candidate.state) is None:
+        if state is None:
             return []
         if obs is not snap.recorded_obs:
             return self._tracks(snap, state, obs)

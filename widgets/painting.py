@@ -60,6 +60,7 @@ class Painter:
                 settings.station,
                 dict(settings.offsets.get(settings.station, {})),
                 settings.row_clock.get(settings.row, 0.0),
+                settings.estimate,
             ),
             "candidates": candidate_table(snap),
             "orbit": orbit_table(snap, self._convergence(snap, frame)),
@@ -88,7 +89,8 @@ class Painter:
     def _residuals(
         self, snap: Snapshot, marks: list[RowMark], frame: FrameWriter, settings: Settings
     ) -> dict[str, Any]:
-        note = "observed − computed, converged orbit" if snap.chosen is not None else "no orbit to compare with"
+        orbit = "least squares" if snap.fit is not None else "converged orbit"
+        note = f"observed − computed, {orbit}" if snap.chosen is not None else "no orbit to compare with"
         if snap.what_if and snap.chosen is not None:
             note += "; short bars: recorded"
         return residuals(
@@ -107,10 +109,10 @@ class Painter:
             marks,
             np.degrees(np.stack(directions(snap.obs.sight_lines.los), axis=1)),
             snap.residuals,
-            self._drawn.tracks(snap, snap.chosen, snap.obs),
+            self._drawn.tracks(snap, snap.shown_state, snap.obs),
             frame=frame,
             width=settings.widths["sky"],
-            recorded_tracks=self._drawn.tracks(snap, snap.recorded, snap.recorded_obs) if snap.what_if else (),
+            recorded_tracks=self._drawn.tracks(snap, snap.recorded_state, snap.recorded_obs) if snap.what_if else (),
             recorded_arcsec=snap.recorded_residuals if snap.what_if else None,
             memory=self._memory["sky"],
         )
@@ -147,8 +149,8 @@ class Painter:
     def _orbit(
         self, snap: Snapshot, marks: list[RowMark], frame: FrameWriter, settings: Settings
     ) -> dict[str, Any] | None:
-        chosen = snap.chosen
-        if chosen is None or (shown := chosen.state) is None:
+        chosen, shown = snap.chosen, snap.shown_state
+        if chosen is None or shown is None:
             return None
         scale, unit = length_unit(snap.center)
         lines = snap.obs.sight_lines
@@ -164,8 +166,8 @@ class Painter:
         ]
         ghost = None
         note = ""
-        if snap.what_if and snap.recorded is not None and snap.recorded.state is not None:
-            ghost = curve_of(snap.recorded.state, scale)
+        if snap.what_if and (before := snap.recorded_state) is not None:
+            ghost = curve_of(before, scale)
             note = "recorded dashed"
         return orbit_space(
             space_orbit(chosen.letter, shown, scale, positions[np.argsort(lines.t_s)]),
@@ -199,7 +201,7 @@ def row_marks(snap: Snapshot) -> list[RowMark]:
             t_s=float(times[i]),
             station=snap.codes[i],
             shape=snap.shapes[i],
-            used=bool(snap.used[i]),
+            used=bool(snap.inside[i]),
             pick=snap.pick.index(i) + 1 if i in snap.pick else 0,
             selected=i == snap.selected,
         )

@@ -28,6 +28,8 @@ class Settings:
     station: str
     row: int
     excluded: tuple[int, ...] = ()
+    kept: tuple[int, ...] = ()
+    estimate: str = ""
     offsets: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
     row_clock: Mapping[int, float] = field(default_factory=dict)
     candidate: str | None = None
@@ -42,6 +44,8 @@ class Settings:
             "seq": self.seq,
             "pick": list(self.pick),
             "excluded": list(self.excluded),
+            "kept": list(self.kept),
+            "estimate": self.estimate,
             "station": self.station,
             "offsets": {code: dict(values) for code, values in self.offsets.items()},
             "row_clock": {str(row): value for row, value in self.row_clock.items()},
@@ -57,6 +61,8 @@ def checked(raw: Mapping[str, Any], before: Settings, count: int, stations: tupl
     """Settings from the browser; each unusable value is replaced by the one of ``before``."""
     pick = rows_of(raw.get("pick"), count)
     excluded = rows_of(raw.get("excluded"), count)
+    kept = rows_of(raw.get("kept"), count)
+    estimates = ["", *(f"{kind}:{code}" for kind in ("clock", "station") for code in stations)]
     station = raw.get("station")
     row = rows_of([raw.get("row")], count)
     candidate = raw.get("candidate", before.candidate)
@@ -65,6 +71,8 @@ def checked(raw: Mapping[str, Any], before: Settings, count: int, stations: tupl
         station=station if station in stations else before.station,
         row=before.row if row is None else row[0],
         excluded=before.excluded if excluded is None else tuple(sorted(set(excluded))),
+        kept=before.kept if kept is None else tuple(sorted(set(kept) - set(excluded or ()))),
+        estimate=raw["estimate"] if raw.get("estimate") in estimates else before.estimate,
         offsets=before.offsets if "offsets" not in raw else offsets_of(raw["offsets"], stations),
         row_clock=before.row_clock if "row_clock" not in raw else row_clock_of(raw["row_clock"], count),
         candidate=candidate if candidate is None or isinstance(candidate, str) else before.candidate,

@@ -7,11 +7,12 @@ from typing import Any
 
 import numpy as np
 
+from firstarc.determination.orbit_fit import Estimate, OrbitFit
 from firstarc.determination.preliminary import Preliminary
 from firstarc.determination.stages import Candidate
 from firstarc.errors import FirstArcError
 from firstarc.observing.what_if import WhatIf
-from firstarc.pipeline import preliminary, residuals_of
+from firstarc.pipeline import fit, preliminary, residuals_of
 from firstarc.report.rounding import fixed
 from firstarc.results import Code
 
@@ -48,8 +49,10 @@ class Solver:
 
     def __init__(self, obs: Any):
         self.obs = obs
-        self._residuals: tuple[Candidate | None, np.ndarray | None] = (None, None)
+        self._residuals: tuple[Any, np.ndarray | None] = (None, None)
         self._recorded: dict[Any, Preliminary | None] = {}
+        self._recorded_fits: dict[Any, OrbitFit] = {}
+        self._estimates: tuple[Any, tuple[Estimate, ...], str] = (None, (), "")
 
     def snapshot(self, settings: Settings) -> Snapshot:
         """Solve under ``settings``. Data that admit no orbit, and settings that cannot be used, become a failure."""
@@ -71,9 +74,15 @@ class Solver:
         if chosen is None and failure is None:
             failure = reason_of_failure(moved, settings.pick, pre)
         recorded = self._recorded_candidate(used, settings) if what_if else chosen
+        found, recorded_fit, problem, asked = self._fits(moved, used, settings, pre, chosen)
         residuals, chi = residual_arrays(chosen, moved)
-        if recorded is not self._residuals[0]:
-            self._residuals = (recorded, residual_arrays(recorded, self.obs)[0])
+        if found is not None:
+            residuals, chi = found.residuals_arcsec, found.chi
+        base = recorded if recorded_fit is None else recorded_fit
+        if base is not self._residuals[0]:
+            of_base = residual_arrays(recorded, self.obs)[0] if recorded_fit is None else recorded_fit.residuals_arcsec
+            self._residuals = (base, of_base)
+        estimated, words = self._estimate(settings, recorded)
         return Snapshot(
             obs=moved,
             recorded_obs=self.obs,
@@ -89,7 +98,59 @@ class Solver:
             what_if=what_if,
             method=settings.method,
             failure=failure,
+            fit=found,
+            recorded_fit=recorded_fit,
+            fit_problem=problem,
+            fit_choices=asked if found is not None else None,
+            held=settings.held,
+            estimated=estimated,
+            estimate_words=words,
         )
+
+    def _fits(
+        self,
+        moved: Any,
+        used: np.ndarray,
+        settings: Settings,
+        pre: Preliminary | None,
+        chosen: Candidate | None,
+    ) -> tuple[OrbitFit | None, OrbitFit | None, str, dict[str, Any]]:
+        """The fit in force, the recorded one, why there is none, and the choices. None while a slider is held."""
+        asked = choices(settings)
+        what_if = moved is not self.obs
+        if settings.held or chosen is None:
+            return None, None, "", asked
+        key = (settings.excluded, settings.kept, settings.pick, settings.method, settings.candidate)
+        base = self._recorded_solution(used, settings) if what_if else pre
+        if key not in self._recorded_fits and base is not None and base.best is not None:
+            try:
+                self._recorded_fits = {key: fit(self.obs, start=start_of(base, settings.candidate), **asked)}
+            except FirstArcError as error:
+                self._recorded_fits = {}
+                if not what_if:
+                    return None, None, sentence(str(error)), asked
+        recorded_fit = self._recorded_fits.get(key)
+        if not what_if:
+            return recorded_fit, recorded_fit, "" if recorded_fit else "no recorded candidate to start from.", asked
+        held_out = () if recorded_fit is None else tuple(int(i) for i in np.flatnonzero(~recorded_fit.used))
+        asked = choices(settings, held_out)
+        try:
+            return fit(moved, start=start_of(pre, settings.candidate), **asked), recorded_fit, "", asked
+        except FirstArcError as error:
+            return None, recorded_fit, sentence(str(error)), asked
+
+    def _estimate(self, settings: Settings, recorded: Candidate | None) -> tuple[tuple[Estimate, ...], str]:
+        """Offsets of a station from the recorded observations, where the hand asked for them."""
+        if not settings.estimate or settings.held or recorded is None:
+            return (), ""
+        key = (settings.estimate, settings.excluded, settings.kept, settings.pick, settings.candidate)
+        if self._estimates[0] != key:
+            try:
+                found = fit(self.obs, start=recorded, estimate=(settings.estimate,), **choices(settings))
+                self._estimates = (key, found.estimates, "")
+            except FirstArcError as error:
+                self._estimates = (key, (), sentence(str(error)))
+        return self._estimates[1], self._estimates[2]
 
     def _preliminary(self, obs: Any, used: np.ndarray, settings: Settings) -> Preliminary:
         if used.all():
@@ -99,6 +160,9 @@ class Solver:
         return preliminary(kept, pick=tuple(int(i) for i in inside), method=settings.method)
 
     def _recorded_candidate(self, used: np.ndarray, settings: Settings) -> Candidate | None:
+        return chosen_of(self._recorded_solution(used, settings), settings.candidate)
+
+    def _recorded_solution(self, used: np.ndarray, settings: Settings) -> Preliminary | None:
         key = (used.tobytes(), settings.pick, settings.method)
         if key not in self._recorded:
             # one entry: only the present choices are ever compared with
@@ -106,7 +170,23 @@ class Solver:
                 self._recorded = {key: self._preliminary(self.obs, used, settings)}
             except FirstArcError:
                 self._recorded = {key: None}
-        return chosen_of(self._recorded[key], settings.candidate)
+        return self._recorded[key]
+
+
+def start_of(pre: Preliminary | None, letter: str | None) -> Any:
+    """Where the fit begins: at the candidate chosen by hand, else at every admissible one."""
+    for candidate in () if pre is None else pre.candidates:
+        if candidate.letter == letter and candidate.admissible:
+            return candidate
+    return pre
+
+
+def choices(settings: Settings, held_out: tuple[int, ...] | None = None) -> dict[str, Any]:
+    """What the hand chose, as arguments of ``fit``. During a what-if rejections are held: ``held_out`` are out."""
+    if held_out is None:
+        return {"keep": settings.kept, "leave_out": settings.excluded}
+    out = sorted({*settings.excluded, *held_out} - set(settings.kept))
+    return {"keep": (), "leave_out": tuple(out), "reject": False}
 
 
 def chosen_of(pre: Preliminary | None, letter: str | None) -> Candidate | None:

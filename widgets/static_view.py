@@ -212,7 +212,7 @@ def _orbit(table: dict[str, Any], frame: bytes) -> str:
     if table["none"]:
         none = f'<tr><td class="l why">{escape(table["none"])}</td></tr>'
         return f'<table class="stg">{caption}<tbody>{none}</tbody></table>'
-    kinds = {"stage": "", "sigma": "sg", "recorded": "rc"}
+    kinds = {"stage": "", "fit": "lv", "sigma": "sg", "recorded": "rc"}
     head = '<th scope="col" class="l"><span class="vh">element</span></th>'
     for column in table["columns"]:
         sub = f'<span class="sb">{escape(column["sub"] or NO_BREAK)}</span>'
@@ -246,7 +246,7 @@ def _cell_text(cell: dict[str, Any]) -> str:
 
 
 def _cell_html(cell: dict[str, Any], kind: str) -> str:
-    if kind != "stage":
+    if kind not in ("stage", "fit"):
         return escape(_cell_text(cell))
     whole, fraction, agree = cell["whole"], cell["fraction"], cell["agree"]
     inner = _agreeing(whole, agree), _agreeing(fraction, max(agree - len(whole), 0))

@@ -229,6 +229,16 @@ class Observations(Shown):
         """Lines of sight, observer vectors and times as plain arrays, what-ifs applied."""
         return lines.sight_lines(self.records, self.geometry, self.center, self.directions, self.epoch_tdb)
 
+    @cached_property
+    def observer_velocity_km_s(self) -> NDArray[np.float64]:
+        """Velocity (n, 3) of each observer from the centre, ICRF axes, km/s, what-ifs applied."""
+        return lines.observer_velocity(self.geometry, self.center)
+
+    @cached_property
+    def station_axes(self) -> NDArray[np.float64]:
+        """East, north and up (n, 3, 3) at each station on ICRF axes, one a row, what-ifs applied."""
+        return lines.station_axes(self.geometry)
+
     def altitude_deg(self) -> NDArray[np.float64]:
         """Altitudes above the station's horizon, deg, without refraction; NaN at the geocentre."""
         g = self.geometry

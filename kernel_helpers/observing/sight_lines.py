@@ -179,6 +179,24 @@ def observer_from_center(g: Geometry, center: str) -> tuple[NDArray[np.float64],
     return g.station_km, g.bodies.earth_km_s
 
 
+def observer_velocity(g: Geometry, center: str) -> NDArray[np.float64]:
+    """Velocity (n, 3) km/s of the observer from the centre, ICRF axes."""
+    if center == "sun":
+        return g.bodies.earth_km_s - g.bodies.sun_km_s + g.station_km_s
+    return g.station_km_s
+
+
+def station_axes(g: Geometry) -> NDArray[np.float64]:
+    """Unit vectors east, north and up (n, 3, 3) of the stations on ICRF axes, one a row."""
+    lon, lat = np.radians(g.lon_deg), np.radians(g.lat_deg)
+    zero = np.zeros_like(lon)
+    east = np.stack([-np.sin(lon), np.cos(lon), zero], axis=1)
+    north = np.stack([-np.sin(lat) * np.cos(lon), -np.sin(lat) * np.sin(lon), np.cos(lat)], axis=1)
+    up = np.stack([np.cos(lat) * np.cos(lon), np.cos(lat) * np.sin(lon), np.sin(lat)], axis=1)
+    fixed = np.stack([east, north, up], axis=1)
+    return np.asarray(np.einsum("naj,nji->nai", fixed, g.to_terrestrial))
+
+
 def directions(records: Records, g: Geometry, kind: str) -> NDArray[np.float64]:
     """Unit vectors (n, 3); apparent directions lose their annual and diurnal aberration here."""
     los = frames.unit_vectors(records.ra_deg, records.dec_deg)

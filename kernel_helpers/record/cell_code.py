@@ -49,6 +49,7 @@ def preliminary_code(
     pick: Sequence[int],
     letter: str | None,
     method: str = "gauss",
+    fit: Mapping[str, Any] | None = None,
 ) -> str:
     """Code that repeats a preliminary determination.
 
@@ -65,6 +66,8 @@ def preliminary_code(
         The candidate chosen by hand; None for the best.
     method : str
         As given to ``preliminary``.
+    fit : mapping, optional
+        ``keep``, ``leave_out`` (positions in ``obs``) and ``reject`` of the fit that follows; None for no fit.
     """
     out = sorted(int(position) for position in excluded)
     kept = [position for position in range(len(obs)) if position not in out]
@@ -72,13 +75,19 @@ def preliminary_code(
     if what_if:
         renumbered = _row_numbers_of_code(obs)
         lines.append(f"obs = obs.with_what_if({', '.join(what_if_code(one, renumbered) for one in what_if)})")
-    if out:
-        lines.append(f"obs = obs.without({out})")
     numbers = tuple(kept.index(int(position)) for position in pick)
     way = "" if method == "gauss" else f", method={method!r}"
-    lines.append(f"pre = fa.preliminary(obs, pick={numbers}{way})")
+    of = f"obs.without({out})" if out else "obs"
+    lines.append(f"pre = fa.preliminary({of}, pick={numbers}{way})")
     lines.append("candidate = pre.best" if letter is None else f"candidate = pre.candidate({letter!r})")
-    lines.append("candidate")
+    if fit is None:
+        lines.append("candidate")
+    else:
+        usual = {"keep": [], "leave_out": [], "reject": True}
+        given = {**usual, **fit, "keep": [int(i) for i in fit["keep"]], "leave_out": [int(i) for i in fit["leave_out"]]}
+        options = "".join(f", {name}={given[name]!r}" for name in usual if given[name] != usual[name])
+        start = "pre" if letter is None else "candidate"
+        lines += [f"fit = fa.fit(obs, start={start}{options})", "fit"]
     return "\n".join(lines) + "\n"
 
 

@@ -6,6 +6,9 @@ import math
 from collections.abc import Callable
 from typing import Any
 
+from scipy.special import chdtrc
+
+from firstarc.determination.orbit_fit import OrbitFit
 from firstarc.determination.stages import Candidate
 from firstarc.report.rounding import MINUS, fixed, scientific, significant
 from firstarc.results import Code
@@ -24,8 +27,9 @@ def checks(snap: Snapshot, bar: Callable[[float], dict[str, Any]]) -> list[dict[
     found = [determinant_check(snap)]
     if snap.chosen is not None:
         chosen = snap.chosen
-        found = [determined_check(snap, chosen), *found, rule_check(snap, chosen), coplanarity_check(chosen)]
-        found += residual_checks(chosen)
+        first = determined_check(snap, chosen) if snap.fit is None else fit_check(snap.fit)
+        found = [first, *found, rule_check(snap, chosen), coplanarity_check(chosen)]
+        found += residual_checks(chosen) if snap.fit is None else fit_residual_checks(snap.fit)
     return [
         {**one, "margin": margin_text(one["margin"]), "bar": bar(one["margin"])} for one in found if one is not None
     ]
@@ -52,6 +56,36 @@ def determined_check(snap: Snapshot, chosen: Candidate) -> dict[str, Any]:
     known = f"slant range at row {row} known to {percent(relative)} %, {limit}"
     holds = snap.determined
     return check("Determined" if holds else "Not determined", known, DETERMINED_LIMIT / relative, fails=not holds)
+
+
+def fit_check(fit: OrbitFit) -> dict[str, Any]:
+    """Do the observations fix one orbit? The first question of the fit that is answered with no decides."""
+    judged = fit.verdicts
+    size = judged.conditioned
+    known = f"weakest direction known to {percent(size.number)} % of distance and speed, limit {percent(size.limit)} %"
+    margin = size.limit / size.number if size.number > 0 else math.nan
+    if fit.determined:
+        return check("Determined", known, margin, fails=False)
+    for one in (judged.converged, judged.redundant):
+        if not one.ok:
+            return check("Not determined", one.sentence, math.nan, fails=True)
+    if not judged.conditioned.ok:
+        return check("Not determined", known, margin, fails=True)
+    if not judged.single.ok:
+        return check("Not determined", judged.single.sentence, math.nan, fails=True)
+    return check("Not determined", judged.linear.sentence, judged.linear.limit / judged.linear.number, fails=True)
+
+
+def fit_residual_checks(fit: OrbitFit) -> list[dict[str, Any]]:
+    if fit.dof < 1:
+        words = "no more observed numbers than unknowns: nothing tests the sigmas"
+        return [check("No redundancy", words, math.nan, fails=False)]
+    head = f"χ² {chi2_words(fit.chi2)} for {fit.dof} degrees of freedom"
+    return [verdict_on_residuals(head, float(chdtrc(fit.dof, fit.chi2)))]
+
+
+def chi2_words(value: float) -> str:
+    return significant(value, 3) if value < 1e6 else scientific(value)
 
 
 def percent(fraction: float) -> str:
@@ -115,16 +149,20 @@ def residual_checks(chosen: Candidate) -> list[dict[str, Any]]:
     if chosen.dof_others == 0 or not math.isfinite(chosen.chi2_others):
         words = "no other sighting: three directions leave no redundancy, so nothing tests the sigmas"
         return [check("No redundancy", words, math.nan, fails=False)]
-    chance = chosen.chance_others
-    chi2 = significant(chosen.chi2_others, 3) if chosen.chi2_others < 1e6 else scientific(chosen.chi2_others)
-    head = f"other rows: χ² {chi2} for {chosen.dof_others} degrees of freedom"
+    head = f"other rows: χ² {chi2_words(chosen.chi2_others)} for {chosen.dof_others} degrees of freedom"
+    return [verdict_on_residuals(head, chosen.chance_others)]
+
+
+def verdict_on_residuals(head: str, chance: float) -> dict[str, Any]:
+    """Chi-square against the stated sigmas, on both sides."""
     limit = f"limit {significant(CHANCE_LIMIT, 1)}"
     if chance < CHANCE_LIMIT:
         shown = scientific(chance, 1) if chance > 1e-12 else "below 10⁻¹²"
         margin = max(chance, 1e-12) / CHANCE_LIMIT
-        return [check("Residuals above σ", f"{head}, chance {shown}, {limit}", margin, fails=True)]
+        return check("Residuals above σ", f"{head}, chance {shown}, {limit}", margin, fails=True)
     if chance > 1.0 - CHANCE_LIMIT:
         words = f"{head}, chance {fixed(chance, 4)}: smaller than the stated sigmas allow"
-        return [check("Residuals below σ", words, (1.0 - chance) / CHANCE_LIMIT, fails=False)]
+        return check("Residuals below σ", words, (1.0 - chance) / CHANCE_LIMIT, fails=False)
     words = f"{head}, chance {fixed(chance, 2)}, {limit}"
-    return [check("Residuals match σ", words, chance / CHANCE_LIMIT, fails=False)]
+    words = f"{head}, chance {fixed(chance, 2)}, {limit}"
+    return check("Residuals match σ", words, chance / CHANCE_LIMIT, fails=False)

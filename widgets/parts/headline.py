@@ -7,10 +7,12 @@ from typing import Any
 
 import numpy as np
 
+from firstarc.constants import AU_KM
+from firstarc.determination.orbit_fit import OrbitFit
 from firstarc.determination.stages import Candidate, element_rows, sigma_rows
 from firstarc.report.rounding import DASH, fixed, significant, with_sigma
 
-from .checks import CHANCE_LIMIT
+from .checks import CHANCE_LIMIT, chi2_words
 from .observation_table import rows_out
 from .snapshot import LARGE_CHI, Snapshot, text
 from .what_if_panel import what_if_words
@@ -23,8 +25,70 @@ def headline(snap: Snapshot) -> tuple[list[list[Any]], bool]:
     """Three lines, and whether the verdict is bad."""
     if snap.chosen is None:
         return failed(snap), True
+    if snap.fit is not None:
+        first, bad = fit_verdict(snap, snap.fit)
+        return [first, fit_basis(snap, snap.fit), fit_what_if_line(snap, snap.fit)], bad
     first, bad = verdict(snap, snap.chosen)
-    return [first, basis(snap, snap.chosen), what_if_line(snap)], bad
+    second = basis(snap, snap.chosen)
+    if snap.fit_problem:
+        second = [*second, f" No least-squares orbit: {snap.fit_problem}"]
+    return [first, second, what_if_line(snap)], bad
+
+
+def fit_verdict(snap: Snapshot, fit: OrbitFit) -> tuple[list[Any], bool]:
+    """Is it determined, and which orbit?"""
+    about = f"{fit.elements.shape} about {'the Earth' if snap.center == 'earth' else 'the Sun'}"
+    if fit.determined:
+        runs = element_runs(snap, element_rows(fit.elements), sigma_rows(fit.elements, fit.sigmas))
+        return [text("Determined.", b=1), f" {about[0].upper()}{about[1:]}: ", *runs, "."], False
+    sample = fit.sample
+    span = ""
+    if np.isfinite(sample.best.state).all():
+        low, high = sample.quantiles(sample.range_km, (0.05, 0.95))
+        unit, scale = ("km", 1.0) if snap.center == "earth" else ("au", AU_KM)
+        span = f" between {significant(low / scale, 3)} and {significant(high / scale, 3)} {unit} (90 % of the sample)"
+    count = int(fit.used.sum())
+    return [text("Not determined.", b=1), f" {count} observations leave the slant range open{span}."], True
+
+
+def fit_basis(snap: Snapshot, fit: OrbitFit) -> list[Any]:
+    """How the rows agree with the least-squares orbit."""
+    count, inside = len(fit.used), int(fit.used.sum())
+    line = (
+        f"{inside} of {count} observations in the fit, rms {rms(fit.rms_arcsec)} against stated σ of "
+        f"{stated_sigmas(snap)}, χ² {chi2_words(fit.chi2)} for {fit.dof} degrees of freedom"
+    )
+    line += "." if fit.verdicts.consistent.ok or fit.dof < 1 else f": {sigma_doubt(fit)}."
+    out = np.flatnonzero(~fit.used)
+    if len(out) == 1:
+        line += f" Row {snap.numbers[int(out[0])]} is out ({fixed(float(fit.chi[out[0]]), 1)} σ)."
+    elif len(out):
+        line += f" {rows_out(snap, ~fit.used)}."
+    large = large_rows(snap)
+    if large and snap.what_if:
+        line += f" {large}"
+    return [line]
+
+
+def sigma_doubt(fit: OrbitFit) -> str:
+    return "larger than the stated σ allow" if fit.chi2 > fit.dof else "smaller than the stated σ would give"
+
+
+def fit_what_if_line(snap: Snapshot, fit: OrbitFit) -> list[Any]:
+    if not snap.what_if:
+        return ["No what-if: these are the recorded observations."]
+    line: list[Any] = [text(f"What-if: {what_if_words(snap.what_if, snap.center)}.", b=1, dev=1)]
+    before = snap.recorded_fit
+    if before is None:
+        return [*line, " The recorded observations have no fit to compare with."]
+    change = fit.chi2 - before.chi2
+    # a change of one is what chance alone does to chi-square when one number is moved by its sigma
+    word = "cannot tell" if abs(change) < 1.0 else "speak against it" if change > 0.0 else "speak for it"
+    line.append(
+        f" Rms {rms(before.rms_arcsec)} → {rms(fit.rms_arcsec)}, χ² {fixed(change, 1, sign=True)}: the observations "
+        f"{word}. Dashed grey: recorded."
+    )
+    return line
 
 
 def failed(snap: Snapshot) -> list[list[Any]]:
@@ -87,8 +151,12 @@ def rival_letters(snap: Snapshot, chosen: Candidate) -> list[str]:
 
 
 def orbit_runs(snap: Snapshot, chosen: Candidate) -> list[Any]:
-    values = element_rows(chosen.elements)
     sigma = sigma_rows(chosen.elements, chosen.sigmas) if snap.shows_sigma else {}
+    return element_runs(snap, element_rows(chosen.elements), sigma)
+
+
+def element_runs(snap: Snapshot, values: dict[str, tuple[float, str]], sigma: dict[str, float]) -> list[Any]:
+    """The elements that name an orbit, with their sigmas."""
     q_name = "perigee" if snap.center == "earth" else "q"
     runs: list[Any] = []
     for key, name in (("a", "a"), ("e", "e"), ("i", "i"), ("q", q_name)):
@@ -110,7 +178,7 @@ def stated_sigmas(snap: Snapshot) -> str:
 
 def basis(snap: Snapshot, chosen: Candidate) -> list[Any]:
     """What the orbit rests on and how the other rows agree with it."""
-    gone = f" {rows_out(snap)}." if not snap.used.all() else ""
+    gone = f" {rows_out(snap, ~snap.used)}." if not snap.used.all() else ""
     if chosen.dof_others == 0:
         return [f"Orbit through rows {snap.pick_numbers} alone: three directions leave no redundancy.{gone}"]
     others = int(snap.used.sum()) - 3
@@ -130,7 +198,8 @@ def basis(snap: Snapshot, chosen: Candidate) -> list[Any]:
 def large_rows(snap: Snapshot) -> str:
     if snap.chi is None:
         return ""
-    rows = [i for i in np.argsort(-snap.chi) if snap.used[i] and snap.chi[i] > LARGE_CHI and i not in snap.pick]
+    picked = () if snap.fit is not None else snap.pick
+    rows = [i for i in np.argsort(-snap.chi) if snap.inside[i] and snap.chi[i] > LARGE_CHI and i not in picked]
     if not rows:
         return ""
     worst = int(rows[0])

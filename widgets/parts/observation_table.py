@@ -40,7 +40,7 @@ def observation_table(snap: Snapshot) -> dict[str, Any]:
                 "row": i,
                 "number": str(snap.numbers[i]),
                 "pick": snap.pick.index(i) + 1 if i in snap.pick else 0,
-                "used": bool(snap.used[i]),
+                "used": bool(snap.inside[i]),
                 "selected": i == snap.selected,
                 "time": f"{stamp[5:10]} {stamp[11:]}" if several_days else stamp[11:],
                 "station": snap.codes[i],
@@ -87,7 +87,7 @@ def residual_texts(snap: Snapshot, i: int, sigma: np.ndarray) -> tuple[str, str,
         texts.append(fixed(value, places, sign=True))
     chi = float(snap.chi[i])
     texts.append(fixed(chi, 1 if chi < 1000.0 else 0))
-    if not snap.used[i]:
+    if not snap.inside[i]:
         texts = [f"({value})" for value in texts]
     return texts[0], texts[1], texts[2], chi > LARGE_CHI
 
@@ -100,14 +100,26 @@ def foot(snap: Snapshot) -> str:
         parts.append(f"Pick {snap.pick_numbers}: lines of sight {angle(first)} and {angle(second)} apart.")
     else:
         parts.append(f"Pick {snap.pick_numbers}.")
+    rejected = ~snap.inside & snap.used
+    if rejected.any():
+        parts.append(f"{rows_out(snap, rejected)}{sizes(snap, rejected)}.")
     if not snap.used.all():
-        parts.append(f"{rows_out(snap)}, taken out by hand.")
+        parts.append(f"{rows_out(snap, ~snap.used)}, taken out by hand.")
+    if snap.what_if and snap.fit is not None:
+        parts.append("Rejections held as recorded during a what-if.")
     return " ".join(parts)
 
 
-def rows_out(snap: Snapshot) -> str:
+def sizes(snap: Snapshot, mask: np.ndarray) -> str:
+    """How far a few rows are off, in sigmas."""
+    if snap.chi is None or mask.sum() > 3:
+        return ", rejected by the fit"
+    return ", rejected: " + ", ".join(f"{fixed(float(snap.chi[i]), 1)} σ" for i in np.flatnonzero(mask))
+
+
+def rows_out(snap: Snapshot, mask: np.ndarray) -> str:
     """Which rows are out: ``Row 7 out``, ``Rows 3, 7 out``; many are counted, not listed."""
-    out = [str(snap.numbers[i]) for i in range(len(snap.obs)) if not snap.used[i]]
+    out = [str(snap.numbers[i]) for i in np.flatnonzero(mask)]
     if len(out) > 8:
         return f"{len(out)} rows out"
     return f"Row{'s' if len(out) > 1 else ''} {', '.join(out)} out"

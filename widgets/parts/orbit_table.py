@@ -5,8 +5,8 @@ from __future__ import annotations
 import math
 from typing import Any
 
-from firstarc.determination.elements import Elements
 from firstarc.determination.stages import Candidate, element_rows, sigma_rows
+from firstarc.determination.state import State
 from firstarc.report.rounding import DASH, agreeing, fixed, sigma_decimals, split_point
 from firstarc.results import Code
 
@@ -30,11 +30,9 @@ MOST_DECIMALS = 8
 
 
 def orbit_table(snap: Snapshot, convergence: dict[str, Any] | None) -> dict[str, Any]:
-    """Elements of Gauss estimate, correction and converged orbit, sigma, and change from the recorded solution."""
+    """Elements of the three stages and of least squares, sigma, and change from the recorded solution."""
     chosen = snap.chosen
-    rule = "Gibbs" if chosen is None or not chosen.gibbs.rule else chosen.gibbs.rule.replace("-", "–")
     row_number = snap.numbers[snap.pick[1]]
-    what_if = bool(snap.what_if)
     columns = [
         {
             "title": "Gauss estimate" if chosen is None else chosen.gauss.name,
@@ -42,13 +40,14 @@ def orbit_table(snap: Snapshot, convergence: dict[str, Any] | None) -> dict[str,
             "kind": "stage",
         },
         {
-            "title": f"{rule} correction",
+            "title": f"{rule_name(chosen)} correction",
             "sub": "none" if chosen is None else rule_words(chosen),
             "kind": "stage",
         },
         {"title": "Converged", "sub": "none" if chosen is None else passes(chosen), "kind": "stage"},
-        {"title": "± σ", "sub": "3 sightings", "kind": "sigma"},
-        {"title": "Δ recorded", "sub": "and in σ" if what_if else "no what-if", "kind": "recorded"},
+        {"title": "Least squares", "sub": fit_words(snap), "kind": "fit"},
+        {"title": "± σ", "sub": "3 sightings" if snap.fit is None else "", "kind": "sigma"},
+        {"title": "Δ recorded", "sub": "and in σ" if snap.what_if else "no what-if", "kind": "recorded"},
     ]
     rows = [] if chosen is None else element_table_rows(snap, chosen) + closing_rows(snap, chosen)
     return {
@@ -58,6 +57,20 @@ def orbit_table(snap: Snapshot, convergence: dict[str, Any] | None) -> dict[str,
         "none": "" if chosen is not None else no_orbit_sentence(snap),
         "convergence": convergence,
     }
+
+
+def rule_name(chosen: Candidate | None) -> str:
+    return "Gibbs" if chosen is None or not chosen.gibbs.rule else chosen.gibbs.rule.replace("-", "–")
+
+
+def fit_words(snap: Snapshot) -> str:
+    """What the least-squares column rests on, or why it is empty."""
+    if snap.fit is None:
+        return "when the hand rests" if snap.held else "none"
+    rows = f"{int(snap.fit.used.sum())} rows"
+    if not snap.fit.determined:
+        return f"{rows}, one of many"
+    return f"{rows}, {'two-body' if snap.fit.forces.endswith('only.') else 'perturbed'}"
 
 
 def rule_words(chosen: Candidate) -> str:
@@ -80,7 +93,8 @@ def passes(chosen: Candidate) -> str:
 def caption_note(snap: Snapshot) -> str:
     stamp = snap.obs.utc_iso(snap.pick[1], 2)
     frame = "ICRF equator" if snap.center == "earth" else "J2000 ecliptic"
-    tail = " Underlined digits agree with the converged orbit." if snap.chosen is not None else ""
+    reference = "least squares" if settled_fit(snap) else "the converged orbit"
+    tail = f" Underlined digits agree with {reference}." if snap.chosen is not None else ""
     return f"at {stamp[:10]} {stamp[11:].rstrip('Z')} UTC, {frame}.{tail}"
 
 
@@ -90,10 +104,24 @@ def no_orbit_sentence(snap: Snapshot) -> str:
     return "No value: no root is admissible."
 
 
+def settled_fit(snap: Snapshot) -> bool:
+    """True when the least-squares orbit is there and determined."""
+    return snap.fit is not None and snap.fit.determined
+
+
+def sigmas_shown(snap: Snapshot, chosen: Candidate) -> dict[str, float]:
+    """Sigmas of the last orbit shown; none where they would claim what the data do not decide."""
+    if snap.fit is not None:
+        return sigma_rows(snap.fit.elements, snap.fit.sigmas) if snap.fit.determined else {}
+    return sigma_rows(chosen.elements, chosen.sigmas) if snap.shows_sigma else {}
+
+
 def element_table_rows(snap: Snapshot, chosen: Candidate) -> list[dict[str, Any]]:
     stages = [element_rows(stage.elements) for stage in (chosen.gauss, chosen.gibbs, chosen.converged)]
-    sigma = sigma_rows(chosen.elements, chosen.sigmas) if snap.shows_sigma else {}
+    stages.append({} if snap.fit is None else element_rows(snap.fit.elements))
+    sigma = sigmas_shown(snap, chosen)
     recorded = recorded_values(snap, chosen)
+    reference = 3 if settled_fit(snap) else 2
     rows = []
     for key, (symbol, name) in ROWS.items():
         if key == "q" and snap.center == "earth":
@@ -107,6 +135,7 @@ def element_table_rows(snap: Snapshot, chosen: Candidate) -> list[dict[str, Any]
             continue
         unit = next(stage[key][1] for stage in stages if stage)
         places = row_places(values, sigma.get(key))
+        last = values[3] if snap.fit is not None else values[2]
         rows.append(
             {
                 "key": key,
@@ -115,9 +144,9 @@ def element_table_rows(snap: Snapshot, chosen: Candidate) -> list[dict[str, Any]
                 "unit": unit,
                 "kind": "element",
                 "cells": [
-                    *stage_cells(values, places, ANGLES.get(key)),
+                    *stage_cells(values, places, ANGLES.get(key), reference),
                     sigma_cell(sigma.get(key), places),
-                    recorded_cell(values[2], recorded.get(key), sigma.get(key), places, ANGLES.get(key)),
+                    recorded_cell(last, recorded.get(key), sigma.get(key), places, ANGLES.get(key)),
                 ],
             }
         )
@@ -137,12 +166,12 @@ def cell(value: str = "", **rest: Any) -> dict[str, Any]:
     return {"whole": whole, "fraction": fraction, "agree": 0, "step": "", "in_sigma": "", "dev": False, **rest}
 
 
-def stage_cells(values: list[float], places: int, period: float | None) -> list[dict[str, Any]]:
+def stage_cells(values: list[float], places: int, period: float | None, reference: int) -> list[dict[str, Any]]:
+    """One cell a stage; digits settled against the stage ``reference`` are counted."""
     cells = []
-    final = values[-1]
     for index, value in enumerate(values):
         shown = fixed(value, places)
-        agree = agreeing(shown, value, final, places, period=period) if index < len(values) - 1 else 0
+        agree = agreeing(shown, value, values[reference], places, period=period) if index < reference else 0
         step = "" if index == 0 else step_text(value, values[index - 1], places, period)
         cells.append(cell(shown, agree=agree, step=step))
     return cells
@@ -166,14 +195,19 @@ def sigma_cell(sigma: float | None, places: int) -> dict[str, Any]:
 
 
 def recorded_values(snap: Snapshot, chosen: Candidate) -> dict[str, float]:
-    """Elements of the recorded solution, brought to the epoch of the present one."""
-    if not snap.what_if or snap.recorded is None or snap.recorded.state is None or chosen.state is None:
+    """Elements of the recorded solution of the same kind, brought to the epoch of the present one."""
+    if not snap.what_if:
         return {}
-    state = snap.recorded.state
-    if state.epoch_tdb != chosen.state.epoch_tdb:
-        state = state.propagated(chosen.state.epoch_tdb)
-    elements: Elements = state.elements
-    return {key: value for key, (value, _) in element_rows(elements).items()}
+    if snap.fit is not None:
+        now: State | None = snap.fit.state
+    else:
+        now = chosen.state
+    before = snap.recorded_state
+    if before is None or now is None:
+        return {}
+    if before.epoch_tdb != now.epoch_tdb:
+        before = before.propagated(now.epoch_tdb)
+    return {key: value for key, (value, _) in element_rows(before.elements).items()}
 
 
 def recorded_cell(
@@ -195,6 +229,7 @@ def closing_rows(snap: Snapshot, chosen: Candidate) -> list[dict[str, Any]]:
     stages = (chosen.gauss, chosen.gibbs, chosen.converged)
     miss = [max(map(abs, stage.miss_arcsec), default=math.nan) for stage in stages]
     rms = [stage.rms_arcsec for stage in stages]
+    fitted = [] if snap.fit is None else [snap.fit.rms_arcsec]
     blank = [cell(), cell()]
     return [
         {
@@ -203,7 +238,7 @@ def closing_rows(snap: Snapshot, chosen: Candidate) -> list[dict[str, Any]]:
             "name": "largest angle between a picked line of sight and the orbit",
             "unit": "",
             "kind": "miss",
-            "cells": [*(cell(arcsec_text(value)) for value in miss), *blank],
+            "cells": [*(cell(arcsec_text(value)) for value in miss), cell(), *blank],
         },
         {
             "key": "rms",
@@ -211,7 +246,7 @@ def closing_rows(snap: Snapshot, chosen: Candidate) -> list[dict[str, Any]]:
             "name": "rms of the residuals of the rows in use",
             "unit": "",
             "kind": "rms",
-            "cells": [*(cell(arcsec_text(value)) for value in rms), *blank],
+            "cells": [*(cell(arcsec_text(value)) for value in rms + (fitted or [math.nan])), *blank],
         },
     ]
 

@@ -9,8 +9,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from firstarc.determination.orbit_fit import Estimate, OrbitFit
 from firstarc.determination.preliminary import Preliminary
 from firstarc.determination.stages import Candidate
+from firstarc.determination.state import State
 
 #: Stations are told apart by shape, never by colour; further stations repeat the shapes beside their code.
 SHAPES = ("circle", "triangle", "square", "diamond", "down", "plus")
@@ -45,18 +47,29 @@ class Snapshot:
     recorded_obs : Observations
         All rows as recorded.
     used : ndarray of bool, shape (n,)
+        Not taken out by hand.
     pick : tuple of int
     selected : int
     preliminary : Preliminary or None
     chosen : Candidate or None
     residuals, recorded_residuals : ndarray, shape (n, 2), or None
-        O-C in arcsec under the chosen candidate, and under the recorded (no what-if) one.
+        O-C in arcsec under the least-squares orbit at rest, under the chosen candidate while a slider is held; and
+        the same without what-if.
     chi : ndarray, shape (n,), or None
     recorded : Candidate or None
         The candidate that the same choices give without what-if.
     what_if : tuple of WhatIf
     method : str
     failure : Failure or None
+    fit, recorded_fit : OrbitFit or None
+        The least-squares orbit over all rows in use, and the one without what-if; None while a slider is held.
+    fit_problem : str
+        Why there is no fit at rest.
+    fit_choices : dict or None
+        Arguments of ``fit`` beside observations and start.
+    held : bool
+    estimated : tuple of Estimate
+        Offsets that were asked to be estimated from the recorded observations; ``estimate_words`` says what came of it.
     """
 
     obs: Any
@@ -73,6 +86,32 @@ class Snapshot:
     what_if: tuple[Any, ...]
     method: str
     failure: Failure | None
+    fit: OrbitFit | None = None
+    recorded_fit: OrbitFit | None = None
+    fit_problem: str = ""
+    held: bool = False
+    fit_choices: dict[str, Any] | None = None
+    estimated: tuple[Estimate, ...] = ()
+    estimate_words: str = ""
+
+    @property
+    def inside(self) -> NDArray[np.bool_]:
+        """Rows in use: those of the fit, or all that were not taken out by hand."""
+        return self.used if self.fit is None else self.fit.used
+
+    @property
+    def shown_state(self) -> State | None:
+        """State of the orbit that figures draw: least squares at rest, else the chosen candidate's."""
+        if self.fit is not None:
+            return self.fit.state
+        return None if self.chosen is None else self.chosen.state
+
+    @property
+    def recorded_state(self) -> State | None:
+        """The same without what-if."""
+        if self.fit is not None:
+            return None if self.recorded_fit is None else self.recorded_fit.state
+        return None if self.recorded is None else self.recorded.state
 
     @property
     def center(self) -> str:

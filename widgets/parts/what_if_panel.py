@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from typing import Any
 
-from firstarc.report.rounding import MINUS, fixed, sexagesimal
+from firstarc.report.rounding import MINUS, fixed, sexagesimal, with_sigma
 
 from .snapshot import Snapshot
 
@@ -31,7 +31,9 @@ SPANS = {
 }
 
 
-def what_if_panel(snap: Snapshot, station: str, offsets: dict[str, float], row_clock: float) -> dict[str, Any]:
+def what_if_panel(
+    snap: Snapshot, station: str, offsets: dict[str, float], row_clock: float, estimate: str = ""
+) -> dict[str, Any]:
     """Sliders for one station and for the selected row.
 
     Parameters
@@ -43,6 +45,8 @@ def what_if_panel(snap: Snapshot, station: str, offsets: dict[str, float], row_c
         ``lat_deg``, ``lon_deg``, ``height_m``, ``clock_s`` of that station; missing means zero.
     row_clock : float
         Offset of the selected row's time, s.
+    estimate : str
+        What was asked to be estimated, as for ``fit(estimate=...)``.
     """
     sites = snap.recorded_obs.stations
     site = next(site for site in sites if site.code == station)
@@ -64,7 +68,35 @@ def what_if_panel(snap: Snapshot, station: str, offsets: dict[str, float], row_c
         "station": station,
         "any": bool(snap.what_if),
         "sliders": sliders,
+        "estimate": estimate_answer(snap, estimate),
     }
+
+
+def estimate_answer(snap: Snapshot, estimate: str) -> dict[str, Any]:
+    """The offset that the recorded observations themselves ask for, with its sigma, and how to set it as a what-if."""
+    if not estimate or snap.held:
+        return {"asked": estimate, "text": "", "offsets": {}, "station": ""}
+    kind, _, code = estimate.partition(":")
+    if not snap.estimated:
+        words = snap.estimate_words or "there is no recorded orbit to start from."
+        return {"asked": estimate, "text": f"Not estimated: {words}", "offsets": {}, "station": code}
+    parts = [with_sigma(one.value, one.sigma, one.unit) for one in snap.estimated]
+    if kind == "clock":
+        words = f"{code} clock {parts[0]} by least squares"
+        offsets = {"clock_s": round(snap.estimated[0].value, 6)}
+    else:
+        names = [one.name.split(" ")[0] for one in snap.estimated]
+        moved = ", ".join(f"{part} {name}" for part, name in zip(parts, names, strict=True))
+        words = f"{code} {moved} by least squares"
+        east, north, up = (one.value for one in snap.estimated)
+        site = next(site for site in snap.recorded_obs.stations if site.code == code)
+        cos_lat = max(math.cos(math.radians(site.lat_deg)), 1e-6)
+        offsets = {
+            "lat_deg": round(north / METRES_PER_DEGREE, 8),
+            "lon_deg": round(east / METRES_PER_DEGREE / cos_lat, 8),
+            "height_m": round(up, 2),
+        }
+    return {"asked": estimate, "text": words, "offsets": offsets, "station": code}
 
 
 def slider(spans: dict, key: str, value: float, **rest: Any) -> dict[str, Any]:

@@ -10,7 +10,7 @@ export interface Waiting {
 
 const STALE_MS = 250;
 const EMPTY: Settings = {
-  seq: -1, pick: null, excluded: [], station: "", offsets: {}, row_clock: {}, row: 0, candidate: null, method: "",
+  seq: -1, pick: null, excluded: [], kept: [], estimate: "", station: "", offsets: {}, row_clock: {}, row: 0, candidate: null, method: "",
   held: false,
   widths: { residuals: 0, sky: 0, orbit: 0, root: 0 },
 };

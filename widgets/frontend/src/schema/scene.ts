@@ -8,7 +8,11 @@ export interface Settings {
   seq: number;
   /** Rows are positions in the Desk's observations, from 0. */
   pick: [number, number, number] | null;
+  /** Rows taken out by hand, and rows kept in against the automatic rejection. */
   excluded: number[];
+  kept: number[];
+  /** What is to be estimated from the recorded observations: "clock:CODE", "station:CODE" or "". */
+  estimate: string;
   /** Station whose offsets the sliders show. */
   station: string;
   /** Offsets per station code; absent = zero. */
@@ -76,6 +80,8 @@ export interface WhatIfPanel {
   station: string;
   any: boolean;
   sliders: Slider[];
+  /** What was asked to be estimated, the answer in words, and the offsets that take it over as a what-if. */
+  estimate: { asked: string; text: string; offsets: Offsets; station: string };
 }
 export interface Slider {
   key: "lat_deg" | "lon_deg" | "height_m" | "clock_s" | "row_clock";
@@ -103,7 +109,7 @@ export interface CandidateRow {
 
 export interface OrbitTable {
   note: string;
-  columns: { title: string; sub: string; kind: "stage" | "sigma" | "recorded" }[];
+  columns: { title: string; sub: string; kind: "stage" | "fit" | "sigma" | "recorded" }[];
   rows: OrbitRow[];
   /** Sentence shown instead of the values when no stage has any. */
   none: string;

@@ -62,19 +62,26 @@ export function observations(context: Context): View {
   const isUsed = (row: ObservationRow): boolean => {
     if (!shown || shown.settled) return row.used;
     if (shown.settings.excluded.includes(row.row)) return false;
+    if (shown.settings.kept.includes(row.row)) return true;
     return row.used || shown.scene.settings.excluded.includes(row.row);
   };
   const toggle = (row: ObservationRow): void => {
     const out = isUsed(row);
     sync.change((s) => {
-      if (!out) return { excluded: s.excluded.filter((number) => number !== row.row) };
-      const excluded = [...new Set([...s.excluded, row.row])].sort((a, b) => a - b);
+      const other = (rows: number[]): number[] => rows.filter((number) => number !== row.row);
+      const joined = (rows: number[]): number[] => [...other(rows), row.row].sort((a, b) => a - b);
+      if (!out) {
+        // A row that the fit rejected comes back only by being kept against the rejection.
+        return s.excluded.includes(row.row) ? { excluded: other(s.excluded) } : { kept: joined(s.kept) };
+      }
+      const excluded = joined(s.excluded);
+      const kept = other(s.kept);
       const pick = s.pick ?? pickOf();
-      if (!pick.includes(row.row)) return { excluded };
+      if (!pick.includes(row.row)) return { excluded, kept };
       // A picked row leaves the pick as well; without another row to take its place it stays in.
       const usable = new Set(data().filter(isUsed).map((r) => r.row));
       const rest = dropFromPick(data().map((r) => r.row), usable, pick, row.row);
-      return rest?.length === 3 ? { excluded, pick: rest as [number, number, number] } : {};
+      return rest?.length === 3 ? { excluded, kept, pick: rest as [number, number, number] } : {};
     }, true);
   };
 

@@ -37,10 +37,10 @@ interface CellNodes {
   paint(cell: OrbitCell): void;
 }
 
-function stageCell(first: boolean, last: boolean, key: string, index: number): CellNodes {
+function stageCell(first: boolean, last: boolean, fit: boolean, key: string, index: number): CellNodes {
   const number = numberNodes();
   const value = make("td", { class: last ? "lv" : null, "data-fa": `cell-${key}-${index}` }, number.root);
-  const step = make("td", { class: "dl g", "data-fa": `step-${key}-${index}` });
+  const step = make("td", { class: fit ? "dl g ls" : "dl g", "data-fa": `step-${key}-${index}` });
   return {
     tds: first ? [value] : [step, value],
     paint(cell) {
@@ -74,8 +74,13 @@ function recordedCell(key: string, index: number): CellNodes {
 function withdrawn(table: OrbitTable): OrbitRow[] {
   return table.rows.map((row) => ({
     ...row,
-    cells: table.columns.map(({ kind }) => (kind === "stage" ? { ...NOTHING, whole: "–" } : NOTHING)),
+    cells: table.columns.map(({ kind }) => (isStage(kind) ? { ...NOTHING, whole: "–" } : NOTHING)),
   }));
+}
+
+/** Least squares is shown as the last stage. */
+function isStage(kind: Column["kind"]): boolean {
+  return kind === "stage" || kind === "fit";
 }
 
 function sameColumns(a: OrbitTable, b: OrbitTable | null): boolean {
@@ -107,19 +112,20 @@ export function orbitTable(): View {
   function build(table_: OrbitTable): void {
     const element = make("span", { class: "vh" }, "element");
     head.replaceChildren(make("th", { scope: "col", class: "l", colspan: 2 }, element));
-    const lastStage = table_.columns.map((c) => c.kind).lastIndexOf("stage");
+    const kinds = table_.columns.map((c) => c.kind);
+    const lastStage = kinds.map(isStage).lastIndexOf(true);
     heads = table_.columns.map((column, index) => {
       const title = document.createTextNode("");
       const sub = make("span", { class: "sb" });
-      const cls = { stage: "g", sigma: "sg", recorded: "rc" }[column.kind];
-      const arrow = column.kind === "stage" && index > 0
-        ? [make("span", { class: "ar", "aria-label": "then" }, "→")] : [];
-      const span = column.kind === "recorded" || (column.kind === "stage" && index > 0) ? 2 : null;
+      const cls = { stage: "g", fit: "g ls", sigma: "sg", recorded: "rc" }[column.kind];
+      const later = isStage(column.kind) && index > 0;
+      const arrow = later ? [make("span", { class: "ar", "aria-label": "then" }, "→")] : [];
+      const span = column.kind === "recorded" || later ? 2 : null;
       head.append(make("th", { scope: "col", class: cls, colspan: span }, ...arrow, title, sub));
       return { title, sub };
     });
     const shares = [SHARE.symbol, SHARE.unit, ...table_.columns.flatMap((column, index) => {
-      if (column.kind === "stage") return index > 0 ? [SHARE.step, SHARE.value] : [SHARE.value];
+      if (isStage(column.kind)) return index > 0 ? [SHARE.step, SHARE.value] : [SHARE.value];
       return column.kind === "sigma" ? [SHARE.sigma] : [SHARE.recorded, SHARE.inSigma];
     })];
     const total = shares.reduce((sum, share) => sum + share, 0);
@@ -128,11 +134,11 @@ export function orbitTable(): View {
       col.style.width = `${(100 * share) / total}%`;
       return col;
     }));
-    rows = table_.rows.map((row) => makeRow(row, table_.columns, lastStage));
+    rows = table_.rows.map((row) => makeRow(row, table_.columns, lastStage, kinds.lastIndexOf("stage")));
     body.replaceChildren(...rows.map(({ tr }) => tr));
   }
 
-  function makeRow(row: OrbitRow, columns_: Column[], lastStage: number): RowNodes {
+  function makeRow(row: OrbitRow, columns_: Column[], lastStage: number, traceAfter: number): RowNodes {
     const symbol = make("span", { class: "sy", "aria-hidden": "true" });
     const name = make("span", { class: "vh" });
     const unit = make("td", { class: "un" });
@@ -142,15 +148,17 @@ export function orbitTable(): View {
     if (element) tr.append(unit);
     const cells: CellNodes[] = [];
     columns_.forEach((column, index) => {
-      // The trace of the convergence takes the places right of the last stage in the row of the misses.
-      if (row.kind === "miss" && index > lastStage) return;
-      const cell = column.kind === "stage" ? stageCell(index === 0, index === lastStage, row.key, index)
+      // The trace of the convergence takes the places right of the converged orbit in the row of the misses.
+      if (row.kind === "miss" && index > traceAfter) return;
+      const cell = isStage(column.kind)
+        ? stageCell(index === 0, index === lastStage, column.kind === "fit", row.key, index)
         : column.kind === "sigma" ? sigmaCell(row.key, index) : recordedCell(row.key, index);
       cells.push(cell);
       tr.append(...cell.tds);
     });
     if (row.kind === "miss") {
-      const span = columns_.slice(lastStage + 1).reduce((n, c) => n + (c.kind === "recorded" ? 2 : 1), 0);
+      const width = { stage: 2, fit: 2, sigma: 1, recorded: 2 };
+      const span = columns_.slice(traceAfter + 1).reduce((n, c) => n + width[c.kind], 0);
       if (span) tr.append(make("td", { class: "cvm", colspan: span }, convergence.root));
     }
     return {
@@ -169,7 +177,8 @@ export function orbitTable(): View {
   function align(table_: OrbitTable): void {
     for (const row of table_.rows) {
       row.cells.forEach((cell, index) => {
-        if (table_.columns[index]?.kind !== "stage") return;
+        const kind = table_.columns[index]?.kind;
+        if (!kind || !isStage(kind)) return;
         widest.whole = Math.max(widest.whole, cell.whole.length);
         widest.fraction = Math.max(widest.fraction, cell.fraction.length);
       });

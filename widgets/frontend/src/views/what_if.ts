@@ -1,6 +1,6 @@
 import { CleanUp, keepChildren, make, setAttribute, setText } from "../dom";
 import { typedOffset } from "../typed_offset";
-import type { Settings, Slider } from "../schema/scene";
+import type { Offsets, Settings, Slider } from "../schema/scene";
 import type { Context, Shown, View } from "./view";
 
 type Key = Slider["key"];
@@ -163,13 +163,27 @@ export function whatIf(context: Context): View {
   const resetAll = make("button", { type: "button", class: "lk", "data-fa": "reset-all" }, "reset all");
   const wrong = make("p", { class: "foot dvt", id: `${uid}-typed`, role: "alert", "data-fa": "typed" });
   const list = make("div");
+  const kinds = { clock: "estimate clock", station: "estimate place" } as const;
+  const asks = (Object.keys(kinds) as (keyof typeof kinds)[]).map((kind) => {
+    const button = make("button", { type: "button", class: "lk", "data-fa": `estimate-${kind}` }, kinds[kind]);
+    cleanUp.on(button, "click", () => sync.change((s) => ({ estimate: `${kind}:${s.station}` }), true));
+    return button;
+  });
+  const answer = make("span", { "data-fa": "estimate" });
+  const takeOver = make("button", { type: "button", class: "lk", "data-fa": "estimate-apply" }, "set as what-if");
+  let offered: { station: string; offsets: Offsets } = { station: "", offsets: {} };
+  cleanUp.on(takeOver, "click", () => sync.change((s) => ({
+    estimate: "", station: offered.station,
+    offsets: { ...s.offsets, [offered.station]: { ...s.offsets[offered.station], ...offered.offsets } },
+  }), true));
+  const estimates = make("p", { class: "foot est" }, ...asks.flatMap((button) => [button, " "]), answer, " ", takeOver);
   const group = make(
     "div", { class: "wif", role: "group", "aria-label": GROUP },
     make("div", { class: "hd" }, make("h4", {}, "What-if"), make("label", { class: "inl" }, "station ", station),
       make("span", { class: "grow" }), resetAll),
     make("div", { class: "wih", "aria-hidden": "true" }, make("span"), make("span", { class: "rec" }, "▾ recorded"),
       make("span"), make("span"), make("span", { class: "cg" }, "change"), make("span")),
-    list, wrong,
+    list, wrong, estimates,
   );
   const root = make("div", { class: "band" }, group);
   const rows = new Map<Key, SliderRow>();
@@ -210,6 +224,10 @@ export function whatIf(context: Context): View {
         }
         row.paint(slider, shown);
       }
+      const { asked, text, offsets: found, station: of } = panel.estimate;
+      offered = { station: of, offsets: found };
+      setText(answer, shown.settings.estimate && shown.settings.estimate !== asked ? "estimating" : text);
+      takeOver.hidden = Object.keys(found).length === 0 || shown.settings.estimate !== asked;
       const keys = new Set(panel.sliders.map((slider) => slider.key));
       for (const [key, row] of rows) row.root.hidden = !keys.has(key);
     },

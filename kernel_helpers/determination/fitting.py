@@ -1,0 +1,307 @@
+"""From observations to the least-squares orbit: measurements, forces, starts, and the result for people."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import Any, cast
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ..border import planets
+from ..border.solar_system import ephemeris
+from ..constants import ARCSEC_RAD, C_KM_S, DAY_S
+from ..dynamics.decision import decide
+from ..dynamics.force_models import ForceModel, RadiationPressure, full, two_body
+from ..dynamics.trajectory import Perturbed
+from ..errors import UsageError
+from ..fit.fitted import LeastSquares
+from ..fit.measurement_model import MeasurementModel
+from ..fit.measurements import Measurements
+from ..fit.motion import Motion, TwoBody
+from ..fit.orbit_fit import fit_orbit
+from ..fit.parameters import ClockOffset, ForceParameter, Parameter, StationOffset
+from ..fit.rejection import RejectionRule, manual_choice
+from ..fit.verdicts import verdicts
+from ..fit.weighting import same_night_factors
+from ..observing.observations import Observations
+from .orbit_fit import Estimate, OrbitFit
+from .state import GM_KM3_S2, State
+
+Array = NDArray[np.float64]
+FORCES = ("two-body", "full")
+#: Sightings within so many sigmas (and as many arcsec for the ephemeris) of a planet's place are of that planet.
+SEEN_SIGMAS = 5.0
+
+
+@dataclass(frozen=True)
+class Forces:
+    """What was asked of the forces; the model itself follows from it and the arc.
+
+    Attributes
+    ----------
+    asked : None or str
+        None decides by arc and orbit; ``"two-body"`` and ``"full"`` are taken at their word.
+    area_to_mass_m2_kg : float or None
+        With a number, solar radiation pressure acts.
+    estimate_area_to_mass : bool
+    """
+
+    asked: str | None
+    area_to_mass_m2_kg: float | None = None
+    estimate_area_to_mass: bool = False
+
+    def model(self, obs: Observations, state: Array, t_state_s: float) -> ForceModel:
+        """The force model for these observations."""
+        if self.asked == "two-body" and not self.wants_radiation:
+            return two_body(obs.center)
+        lines = obs.sight_lines
+        span = (min(float(lines.t_s.min()), t_state_s), max(float(lines.t_s.max()), t_state_s))
+        radiation = RadiationPressure(self.area_to_mass_m2_kg or 0.0) if self.wants_radiation else None
+        pole = planets.earth_pole((lines.epoch_tdb[0], lines.epoch_tdb[1] + t_state_s / DAY_S))
+        try:
+            tracks = planets.tracks(obs.center, lines.epoch_tdb, span)
+        except UsageError as error:
+            if self.asked is None and not self.wants_radiation:
+                # outside the ephemeris a decision is still possible; its reason says what is missing
+                return decide(obs.center, state, t_state_s, span, float(lines.sigma_rad.min()), None, pole=pole)
+            raise UsageError(f"these forces need the planetary ephemeris: {error}") from error
+        source = ephemeris().name
+        itself = body_seen(obs, tracks)
+        if self.asked == "full" or self.wants_radiation:
+            model = full(obs.center, tracks, pole, source, radiation, itself=itself)
+            reason = self.reason
+        else:
+            sigma = float(lines.sigma_rad.min())
+            model = decide(obs.center, state, t_state_s, span, sigma, tracks, pole=pole, source=source, itself=itself)
+            reason = model.reason
+        if itself:
+            reason += f" These are sightings of {itself.capitalize()} itself: its own attraction is left out."
+        return replace(model, reason=reason.strip())
+
+    @property
+    def wants_radiation(self) -> bool:
+        return self.area_to_mass_m2_kg is not None or self.estimate_area_to_mass
+
+    @property
+    def estimated(self) -> tuple[str, ...]:
+        """The motion's parameters that are unknowns of the fit."""
+        return ("area_to_mass_m2_kg",) if self.estimate_area_to_mass else ()
+
+    @property
+    def reason(self) -> str:
+        return "" if self.asked is None else "Asked for by the caller."
+
+
+def body_seen(obs: Observations, tracks: Mapping[str, Any]) -> str:
+    """The perturbing body that the sightings show, by its directions; an empty text when it is none.
+
+    A planet, or the Moon, does not perturb itself, and near its own place its attraction has no bounds.
+    """
+    lines = obs.sight_lines
+    moving = lines.center_velocity_km_s / C_KM_S if lines.light_time else np.zeros(3)
+    for name, track in tracks.items():
+        away = track(lines.t_s) - lines.observer_km
+        if lines.light_time:
+            distance = np.linalg.norm(away, axis=1)
+            away = track(lines.t_s - distance / C_KM_S) - lines.observer_km - moving * distance[:, None]
+        sine = np.linalg.norm(np.cross(away, lines.los), axis=1) / np.linalg.norm(away, axis=1)
+        ahead = np.sum(away * lines.los, axis=1) > 0.0
+        apart = np.where(ahead, sine, 1.0) / (lines.sigma_rad.max(axis=1) + ARCSEC_RAD)
+        # A single bad sighting does not hide what is seen; nor does a passing planet stay this near for the arc.
+        if float(np.median(apart)) < SEEN_SIGMAS:
+            return name
+    return ""
+
+
+def motion_of(model: ForceModel, names: tuple[str, ...]) -> Motion:
+    """What the fit integrates."""
+    if model.two_body:
+        return TwoBody(model.gm_km3_s2)
+    # integrated arcs give their partials in a tuple of their own; its fields are those the protocol asks for
+    return cast(Motion, Perturbed(model, names))
+
+
+def measurements_of(obs: Observations) -> Measurements:
+    """Observations as the fit takes them.
+
+    Sigmas that stand in by default are enlarged where one station gave more than four observations in a night;
+    stated ones are taken at their word.
+    """
+    lines, records = obs.sight_lines, obs.records
+    more: dict[str, Any] = {}
+    if np.isfinite(lines.range_km).any():
+        more.update(range_km=lines.range_km, sigma_range_km=lines.sigma_range_km)
+    if obs.center == "sun":
+        # about the Sun the observer's vector starts at the Sun: light bends on its way past it
+        more["sun_to_observer_km"] = lines.observer_km
+    found = Measurements.of_sight_lines(
+        lines,
+        observer_velocity_km_s=obs.observer_velocity_km_s,
+        station=records.site_index,
+        # the observations hold east, north and up as rows, the fit takes them as columns
+        station_axes=np.swapaxes(obs.station_axes, 1, 2),
+        **more,
+    )
+    factors = np.where(records.sigma_stated, 1.0, same_night_factors(lines.t_s, records.site_index))
+    return found if (factors == 1.0).all() else found.with_sigma_factors(factors)
+
+
+def parameters_of(obs: Observations, estimate: Sequence[str]) -> tuple[list[Parameter], list[tuple[str, str, float]]]:
+    """What is to be estimated, and how each number is called: (name, unit, factor from the core's unit).
+
+    Raises
+    ------
+    UsageError
+        A name that is none.
+    """
+    codes = [site.code for site in obs.records.sites]
+    seeing = [code for index, code in enumerate(codes) if (obs.records.site_index == index).any()]
+    form = '"clock:CODE", "station:CODE" or "area-to-mass"'
+    parameters: list[Parameter] = []
+    names: list[tuple[str, str, float]] = []
+    for asked in estimate:
+        kind, _, code = str(asked).partition(":")
+        if kind in ("clock", "station"):
+            if code not in seeing:
+                raise UsageError(f"estimate names station {code!r}; stations: {', '.join(seeing)}. Form: {form}")
+            index = codes.index(code)
+            if kind == "clock":
+                parameters.append(ClockOffset(index))
+                names.append((f"clock of {code}", "s", 1.0))
+            else:
+                parameters.append(StationOffset(index))
+                names += [(f"{axis} of {code}", "m", 1000.0) for axis in ("east", "north", "up")]
+        elif asked == "area-to-mass":
+            parameters.append(ForceParameter("area_to_mass_m2_kg"))
+            names.append(("area-to-mass", "m²/kg", 1.0))
+        else:
+            raise UsageError(f"estimate holds {asked!r}; give {form}")
+    return parameters, names
+
+
+def make_fit(
+    obs: Observations,
+    starts: Sequence[State],
+    start_words: str,
+    forces: Forces,
+    reject: bool,
+    estimate: Sequence[str],
+    keep: Sequence[int],
+    leave_out: Sequence[int],
+) -> OrbitFit:
+    """Fit all observations from every start; the epoch is that of the first."""
+    gm = GM_KM3_S2[obs.center]
+    lines = obs.sight_lines
+    epoch = starts[0].epoch_tdb
+    times = np.array([_seconds(state.epoch_tdb, lines.epoch_tdb) for state in starts])
+    plain = np.stack([np.concatenate([state.r_km, state.v_km_s]) for state in starts])
+    parameters, names = parameters_of(obs, estimate)
+    model = forces.model(obs, plain[0], float(times[0]))
+    force_names = forces.estimated
+    measured = measurements_of(obs)
+    real = MeasurementModel(measured, motion_of(model, force_names), float(times[0]), parameters)
+    cheap = None
+    if not model.two_body and not force_names:
+        cheap = MeasurementModel(measured, TwoBody(gm), float(times[0]), parameters)
+    found = fit_orbit(
+        real,
+        plain,
+        times,
+        manual_choice(len(obs), keep, leave_out),
+        RejectionRule() if reject else None,
+        approach=cheap,
+    )
+    return result_of(obs, found, real, model, epoch, names, start_words, forces, tuple(estimate))
+
+
+def result_of(
+    obs: Observations,
+    found: LeastSquares,
+    real: MeasurementModel,
+    model: ForceModel,
+    epoch: tuple[float, float],
+    names: Sequence[tuple[str, str, float]],
+    start_words: str,
+    forces: Forces,
+    estimate: tuple[str, ...],
+) -> OrbitFit:
+    """The core's fit with units, names and verdicts."""
+    judged = verdicts(found, real)
+    count = 6 + len(found.parameters)
+    covariance = np.full((count, count), np.nan) if found.covariance is None else found.covariance
+    sigmas = np.sqrt(np.diag(covariance)[6:])
+    angles = np.where(found.present[:, :2], found.residual[:, :2], np.nan) / ARCSEC_RAD
+    state = State(found.state[:3], found.state[3:], epoch, obs.center)
+    return OrbitFit(
+        state=state,
+        covariance=covariance[:6, :6],
+        status=found.status,
+        verdicts=judged,
+        determined=judged.determined,
+        chi2=found.chi2,
+        dof=found.dof,
+        rms_arcsec=found.rms_rad / ARCSEC_RAD,
+        used=found.used,
+        reasons=found.reasons,
+        residuals_arcsec=angles,
+        sigma_arcsec=found.sigma[:, :2] / ARCSEC_RAD,
+        chi=np.sqrt(np.sum(found.white**2, axis=1)),
+        rows=np.asarray(obs.rows),
+        estimates=tuple(
+            Estimate(name, float(value) * factor, float(sigma) * factor, unit)
+            for (name, unit, factor), value, sigma in zip(names, found.parameters, sigmas, strict=True)
+        ),
+        forces=model.sentence,
+        forces_reason=model.reason or forces.reason,
+        start=start_words,
+        iterations=sum(len(part) for part in found.history),
+        other_minima=tuple(State(one.state[:3], one.state[3:], epoch, obs.center) for one in found.others),
+        notes=(found.rejection_note,) if found.rejection_note else (),
+        center=obs.center,
+        observations=obs,
+        solution=found,
+        asked_forces=forces,
+        asked_estimates=estimate,
+    )
+
+
+def _seconds(epoch: tuple[float, float], origin: tuple[float, float]) -> float:
+    return ((epoch[0] - origin[0]) + (epoch[1] - origin[1])) * DAY_S
+
+
+def prediction_model(fit: OrbitFit, obs: Observations) -> tuple[MeasurementModel, LeastSquares]:
+    """A model of other observations that continues a fit, and the fit on their time scale and with their unknowns.
+
+    Where the forces were decided by the arc they are decided anew over both arcs: a prediction far ahead may need
+    more than the fit did. Offsets of stations that none of these observations comes from play no part.
+    """
+    solution = fit.solution
+    lines, records = obs.sight_lines, obs.records
+    shift = _seconds(fit.observations.sight_lines.epoch_tdb, lines.epoch_tdb)
+    t_state_s = solution.t_state_s + shift
+    model = fit.asked_forces.model(obs, solution.state, t_state_s)
+    seeing = {records.sites[index].code for index in np.unique(records.site_index)}
+    kept, columns, first = [], list(range(6)), 6
+    for asked in fit.asked_estimates:
+        kind, _, code = asked.partition(":")
+        count = 3 if kind == "station" else 1
+        if not code or code in seeing:
+            kept.append(asked)
+            columns += range(first, first + count)
+        first += count
+    parameters, _ = parameters_of(obs, kept)
+    predicted = MeasurementModel(
+        measurements_of(obs), motion_of(model, fit.asked_forces.estimated), t_state_s, parameters
+    )
+    chosen = np.array(columns)
+    covariance = None if solution.covariance is None else solution.covariance[np.ix_(chosen, chosen)]
+    moved = replace(
+        solution,
+        t_state_s=t_state_s,
+        parameters=solution.parameters[chosen[6:] - 6],
+        parameter_names=predicted.parameter_names,
+        covariance=covariance,
+    )
+    return predicted, moved
