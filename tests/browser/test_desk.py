@@ -30,6 +30,23 @@ def shown_stages(desk: Any, name: str) -> list[str]:
     return [desk.locator(f'[data-fa="cell-{name}-{column}"] .n').first.inner_text() for column in range(3)]
 
 
+def check_fit(notebook: Any) -> list[str]:
+    """The least-squares column against the fit in Python, to the digit shown."""
+    computed = notebook.python(
+        "from firstarc.determination.stages import element_rows\n"
+        "answer = {k: element_rows(desk.fit.elements)[k][0] for k in ('a', 'e', 'i', 'node')}"
+    )
+    texts = []
+    for name, value in computed.items():
+        text = notebook.desk(0).locator(f'[data-fa="cell-{name}-3"] .n').first.inner_text()
+        step = 0.5 * 10.0 ** -decimals(text)
+        if decimals(text) == 0:
+            step *= 10.0 ** (len(text) - len(text.rstrip("0")))
+        assert abs(number(text) - value) <= step * 1.0001, (name, text, value)
+        texts.append(text)
+    return texts
+
+
 def check_stages(notebook: Any) -> dict[str, list[str]]:
     """Each of the three stages on the screen against Python, to the digit shown."""
     computed = notebook.python(STAGES)
@@ -48,12 +65,12 @@ def check_stages(notebook: Any) -> dict[str, list[str]]:
 
 def settle(notebook: Any) -> None:
     """Wait until the scene on the screen answers the newest settings."""
-    notebook.page.wait_for_timeout(150)
+    notebook.page.wait_for_timeout(120)
     notebook.page.wait_for_function(
         """() => [...document.querySelectorAll(".fa[data-fa-seq]")].every((e) => e.dataset.faHeld === "false"
-               && !e.querySelector(".in.st"))"""
+               && e.dataset.faSettled === "true" && !e.querySelector(".in.st"))"""
     )
-    notebook.page.wait_for_timeout(250)
+    notebook.page.wait_for_timeout(60)
 
 
 def drag(notebook: Any, key: str, pixels: float) -> None:
@@ -72,6 +89,7 @@ def drag(notebook: Any, key: str, pixels: float) -> None:
 def test_the_example_runs_and_a_dragged_clock_moves_all_three_stages(run_notebook):
     notebook = run_notebook("01_first_look.ipynb", desks=2)
     before = check_stages(notebook)
+    recorded_fit = check_fit(notebook)
     assert "Determined" in notebook.desk(0).locator('[data-fa="headline"]').inner_text()
     assert notebook.python("answer = len(desk.what_if)") == 0
 
@@ -79,11 +97,13 @@ def test_the_example_runs_and_a_dragged_clock_moves_all_three_stages(run_noteboo
     clock = notebook.python("answer = desk.what_if[0].clock_s")
     assert clock > 0.0
     after = check_stages(notebook)
+    assert check_fit(notebook) != recorded_fit
     assert after["node"][2] != before["node"][2]
     assert "What-if" in notebook.desk(0).locator('[data-fa="headline"]').inner_text()
     assert notebook.python("answer = desk.obs.what_if == ()") is True
     # the code that the Desk offers gives the same candidate
-    assert notebook.python("space = {}\nexec(desk.code(), space)\nanswer = space['candidate'] == desk.best") is True
+    same = "space['candidate'] == desk.best and space['fit'] == desk.fit"
+    assert notebook.python(f"space = {{}}\nexec(desk.code(), space)\nanswer = {same}") is True
 
     notebook.desk(0).locator('[data-fa="reset-clock_s"]').click()
     settle(notebook)
@@ -124,6 +144,41 @@ def test_typed_offsets_widen_the_slider_and_a_failing_solve_is_said_in_words(run
     # no stale number is left on the screen
     assert shown_stages(desk, "a") == ["\u2013"] * 3
     desk.locator('[data-fa="reset-all"]').click()
+    settle(notebook)
+    check_stages(notebook)
+
+
+def test_the_clock_is_estimated_and_taken_over(run_notebook):
+    notebook = run_notebook("01_first_look.ipynb")
+    desk = notebook.desk(0)
+    desk.locator('[data-fa="estimate-clock"]').click()
+    settle(notebook)
+    words = desk.locator('[data-fa="estimate"]').inner_text()
+    station = notebook.python("answer = desk.scene['settings']['station']")
+    clock, sigma = notebook.python(
+        f"e = __import__('firstarc').fit(desk.obs, start=desk.preliminary, estimate=['clock:{station}']).estimates[0]\n"
+        "answer = [e.value, e.sigma]"
+    )
+    found = re.search(r"clock (\S+) ± (\S+) s by least squares", words)
+    assert found is not None, words
+    assert abs(number(found[1]) - clock) <= 0.06 * sigma + 0.5 * 10.0 ** -decimals(found[1])
+    desk.locator('[data-fa="estimate-apply"]').click()
+    settle(notebook)
+    assert abs(notebook.python("answer = desk.what_if[0].clock_s") - clock) < 1e-5
+    assert "speak against" not in desk.locator('[data-fa="headline"]').inner_text()
+
+
+def test_another_method_fills_the_same_table(run_notebook):
+    notebook = run_notebook("01_first_look.ipynb")
+    desk = notebook.desk(0)
+    desk.locator('[data-fa="method"]').select_option("laplace")
+    settle(notebook)
+    assert notebook.python("answer = [desk.method, desk.best.method]") == ["laplace", "laplace"]
+    assert "Laplace estimate" in desk.locator('[data-fa="orbit-table"]').inner_text()
+    check_stages_of_method = notebook.python("answer = desk.best.elements.a_km")
+    text = desk.locator('[data-fa="cell-a-2"] .n').first.inner_text()
+    assert abs(number(text) - check_stages_of_method) < 1.0
+    desk.locator('[data-fa="method"]').select_option("gauss")
     settle(notebook)
     check_stages(notebook)
 

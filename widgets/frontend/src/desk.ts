@@ -77,6 +77,7 @@ function render({ model, el }: { model: Model; el: HTMLElement }): () => void {
     rootFigure.paint(scene.figures.root, frame);
     orbit.paint(scene.figures.orbit, frame);
     root.dataset["faHeld"] = String(shown.settings.held);
+    root.dataset["faSettled"] = String(shown.settled);
     root.setAttribute("aria-label", scene.title ? `Desk: ${scene.title}` : "Desk");
     if (paintedSeq === null) measure();
     paintedSeq = scene.seq;
