@@ -10,7 +10,7 @@ from numpy.typing import ArrayLike
 from firstarc.errors import UsageError
 from firstarc.preliminary.lines_of_sight import Array, checked_rows, time_ordered
 from firstarc.preliminary.outcome import Outcome
-from firstarc.preliminary.root_orbits import EXCESS_LIMIT_KM_S, positions, solve_roots
+from firstarc.preliminary.root_orbits import EXCESS_LIMIT_KM_S, RootOrbits, positions, solve_parts
 
 #: Triples solved together: large enough to amortise NumPy's calls, small enough to stay in the cache.
 CHUNK = 8192
@@ -164,7 +164,23 @@ def _solved(
     offset: int,
 ) -> tuple[Array, ...]:
     lines, order, _ = time_ordered(los, observer, times, moving, gm, light_time)
-    codes, _, orbits = solve_roots(lines, body_radius_km, excess_limit_km_s, False, thorough)
+    codes, _, parts = solve_parts(lines, body_radius_km, excess_limit_km_s, False, thorough)
+    rows = [_rows(orbits, order) for orbits in parts if orbits.triple.size]
+    empty = np.flatnonzero(codes != Outcome.CONVERGED)
+    if empty.size or not rows:
+        k = empty.size
+        none = np.full((k, 3, 3), np.nan)
+        rows.append((empty, none[:, 0, 0], none, none[:, 0], codes[empty], np.zeros(k, dtype=int)))
+    columns = rows[0]
+    if len(rows) > 1:
+        columns = tuple(np.concatenate(several) for several in zip(*rows, strict=True))
+        sort = np.lexsort((columns[1], columns[0]))
+        columns = tuple(column[sort] for column in columns)
+    return (columns[0] + offset, *columns[1:])
+
+
+def _rows(orbits: RootOrbits, order: Array) -> tuple[Array, ...]:
+    """Triple, root, positions in the caller's order, velocity, outcome and iterations of each orbit."""
     found = orbits.refined
     placed = positions(orbits.lines, found.range_km).transpose(2, 0, 1)
     order = order[orbits.triple]
@@ -174,23 +190,7 @@ def _solved(
         back[rows, order] = placed
         placed = back
     velocity = found.v2_km_s.T
-    lost = ~found.converged
-    placed[lost] = np.nan
-    velocity = np.where(lost[:, None], np.nan, velocity)
-    columns = (orbits.triple, orbits.root_km, placed, velocity, orbits.outcome, found.iterations)
-    empty = np.flatnonzero(codes != Outcome.CONVERGED)
-    if empty.size:
-        k = empty.size
-        nothing = np.full(k, np.nan)
-        blank = (
-            empty,
-            nothing,
-            np.full((k, 3, 3), np.nan),
-            np.full((k, 3), np.nan),
-            codes[empty],
-            np.zeros(k, dtype=int),
-        )
-        columns = tuple(np.concatenate(pair) for pair in zip(columns, blank, strict=False))  # type: ignore[assignment]
-        sort = np.argsort(columns[0], kind="stable")
-        columns = tuple(column[sort] for column in columns)  # type: ignore[assignment]
-    return (columns[0] + offset, *columns[1:])
+    lost = np.flatnonzero(~found.converged)
+    if lost.size:
+        placed[lost], velocity[lost] = np.nan, np.nan
+    return orbits.triple, orbits.root_km, placed, velocity, orbits.outcome, found.iterations

@@ -14,7 +14,6 @@ from firstarc.preliminary.gibbs import coplanarity_rad, gibbs_vectors
 from firstarc.preliminary.lines_of_sight import (
     Array,
     Lines,
-    angle,
     angle_covariance,
     checked_rows,
     determinant,
@@ -24,7 +23,7 @@ from firstarc.preliminary.lines_of_sight import (
     time_ordered,
 )
 from firstarc.preliminary.outcome import Outcome
-from firstarc.preliminary.refine import angle_map, geometry, last_lanes, look
+from firstarc.preliminary.refine import Look, angle_map, geometry, look
 from firstarc.preliminary.root_orbits import (
     EXCESS_LIMIT_KM_S,
     OWN_RANGE,
@@ -122,7 +121,9 @@ def solve_triple(
     codes, poly, orbits = solve_roots(lines, body_radius_km, excess_limit_km_s, True, thorough=True)
     with np.errstate(all="ignore"):
         d0 = float(determinant(lines.unit)[0])
-        d0_sigma = float("nan") if covariance is None else float(determinant_sigma(lines.unit, covariance)[0])
+        d0_sigma = (
+            float("nan") if covariance is None else float(determinant_sigma(lines.unit, covariance, lines.frame)[0])
+        )
         apart = np.degrees(separations_rad(lines.unit)[:, 0])
         unit_km = float(norm(lines.observer_km[1])[0])
         function = RootFunction(float(poly.a[0]), float(poly.b[0]), float(poly.c[0]), unit_km)
@@ -217,10 +218,10 @@ class _Builder:
         )
         self.states = np.concatenate((r, v), axis=1).reshape(3, m, 6)
         # One pass of light time is enough: what a range error leaves is v/c times the miss it goes with.
-        self.geo = geometry(triple_lanes)
-        self.seen = seen = look(self.geo, ranges, v2)
-        self.miss = seen.miss_rad.reshape(3, 3, m)
-        self.miss[:, 2] = found.miss_rad
+        self.geo = geometry(lanes)
+        twice = self.geo._replace(lines=np.tile(self.geo.lines, 2), middle=np.tile(self.geo.middle, 2))
+        seen = look(twice, ranges[:, : 2 * m], v2[:, : 2 * m])
+        self.miss = np.concatenate((seen.miss_rad, found.miss_rad), axis=1).reshape(3, 3, m)
         self.q, self.excess2 = periapsis(placed[1, :, 2 * m :], found.v2_km_s, self.gm)
         self.q, self.excess2 = np.atleast_1d(self.q), np.atleast_1d(self.excess2)
 
@@ -231,8 +232,7 @@ class _Builder:
             noise = angle_noise(self.lines, orbits.root_km, self.covariance)
         reference = orbits.refined.v2_km_s
         cut = norm(orbits.gibbs_v2 - reference), norm(self.by_herrick - reference)
-        r = orbits.gauss.r_km
-        self.separations = np.degrees(np.stack((angle(r[0], r[1]), angle(r[1], r[2]), angle(r[0], r[2]))))
+        self.separations = np.degrees(separations_rad(orbits.gauss.r_km))
         usable = np.isfinite(np.stack((orbits.gibbs_v2, self.by_herrick))).all(axis=1)
         return [
             choose(
@@ -340,7 +340,9 @@ class _Builder:
         if self.covariance is None or not self.converged.any():
             return [None] * m, [float("nan")] * m
         found, lanes = self.orbits.refined, self.orbits.lines
-        d_range, d_r, d_v = angle_map(lanes, found.range_km, *last_lanes(self.geo, self.seen, 2 * m))
+        d_range, d_r, d_v = angle_map(
+            lanes, found.range_km, self.geo, Look(found.range_km, found.miss_rad, found.looks)
+        )
         r, v = self.states[2, :, :3], self.states[2, :, 3:]
         stm = self.stm[2 * m :]
         at_emission = np.concatenate((d_r, d_v), axis=1).transpose(2, 1, 0)

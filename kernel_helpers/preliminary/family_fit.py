@@ -33,6 +33,8 @@ FINAL_STEP = 1e-11
 LONGEST_STEP = 0.4
 #: Passes after which a lane is given up whose chi-square is this much above the best lane's.
 PATIENCE, LOST = 15, 1e5
+#: Misses that rounding makes.
+ROUNDING_RAD = 1e-14
 #: Newton passes that bring a step back to the conditions.
 BACK_PASSES = 8
 
@@ -257,6 +259,8 @@ def fit_lines(lines: LineSet, state: Array, t_state_s: float, family: Family, pa
         ranges = seen.range_km.copy()
         m = len(state)
         damping = np.full(m, 1e-4)
+        # What misses of rounding size amount to.
+        floor = float(np.sum((ROUNDING_RAD / lines.weights_sigma) ** 2))
         done, count = np.zeros(m, dtype=bool), np.zeros(m, dtype=int)
         going = np.isfinite(chi2)
         for index in range(passes):
@@ -285,6 +289,7 @@ def fit_lines(lines: LineSet, state: Array, t_state_s: float, family: Family, pa
             finished = (size < FINAL_STEP) & (light | (np.sum(pull**2, axis=1) < 1e-10 * old_chi2))
             finished |= light & (promised < 1e-12 * old_chi2 + 1e-18) & (size < 1e-4)
             finished |= light & ~better & (np.abs(new_chi2 - old_chi2) < 1e-11 * old_chi2 + 1e-17)
+            finished |= ~better & (old_chi2 < floor)
             damping[at] = np.where(better, damping[at] * 0.03, np.fmax(damping[at], 1e-16) * 10.0)
             done[at] |= finished
             count[at] += 1

@@ -105,7 +105,8 @@ def solve(
         Shapes that do not fit, fewer than four observations, rows that are not four of them.
     """
     lines = line_set(los, observer_km, t_s, gm_km3_s2, center_velocity_km_s, light_time, sigma_rad, 4)
-    lines = lines.take(_four(lines, rows))
+    with np.errstate(all="ignore"):
+        lines = lines.take(_four(lines, rows))
     if lines.problem is not None:
         return (rejected(METHOD, "", lines, lines.problem, problem_sentence(lines.problem)),)
     with np.errstate(all="ignore"):

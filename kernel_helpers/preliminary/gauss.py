@@ -13,15 +13,16 @@ Source: Curtis, *Orbital Mechanics for Engineering Students*, section 5.10, algo
 from __future__ import annotations
 
 from collections.abc import Callable
-from math import sqrt
+from math import frexp, isfinite, ldexp, sqrt
 from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike
 
-from firstarc.preliminary.lines_of_sight import Array, Lines, cross, dot
+from firstarc.preliminary.lines_of_sight import Array, Lines, crosses, dot
 
 _EPS = float(np.finfo(float).eps)
+_NONE = float("nan")
 #: Up to this many lanes plain floats are quicker than arrays.
 _FEW = 6
 
@@ -49,9 +50,10 @@ def range_polynomial(lines: Lines) -> RangePolynomial:
         l1, l2, l3 = los
         # L1 x L3 and the others from differences: the determinant of a short arc keeps its digits.
         ahead, back = l3 - l2, l1 - l2
-        p1, p3 = cross(l2, ahead), -cross(l2, back)
-        p2 = cross(back, ahead) + p1 + p3
-        d0 = dot(l2, cross(ahead, back))
+        p1, by_back, folded = crosses((l2, l2, back), (ahead, back, ahead))
+        p3 = -by_back
+        p2 = folded + p1 + p3
+        d0 = -dot(l2, folded)
         tau1, tau3 = lines.t_s[0], lines.t_s[2]
         tau = tau3 - tau1
         w1, w3 = tau3 / tau, -tau1 / tau
@@ -91,7 +93,8 @@ def _safe_halley(
         low = np.where(below, x, low)
         high = np.where(below, high, x)
         trial = x - value * slope / (slope * slope - 0.5 * value * curve)
-        inside = (trial > low) & (trial < high)
+        # With the ends: a step that rounding swallows is an arrival.
+        inside = (trial >= low) & (trial <= high)
         following = np.where(inside, trial, np.sqrt(low * high))
         following = np.where(value == 0.0, x, following)
         # Third order: what a step of this size leaves is below a rounding.
@@ -122,13 +125,18 @@ def _safe_halley_alone(
         else:
             high = x
         bottom = slope * slope - 0.5 * value * curve
-        following = x - value * slope / bottom if bottom != 0.0 else low
-        if not low < following < high:
+        following = x - value * slope / bottom if bottom != 0.0 else _NONE
+        if not low <= following <= high:
             following = sqrt(low * high)
         if not abs(following - x) > 1e-9 * x:
             return following
         x = following
     return x
+
+
+def _eighth_root(x: Array) -> Array:
+    root: Array = np.sqrt(np.sqrt(np.sqrt(x)))
+    return root
 
 
 def _octic(x: Any, a: Any, b: Any, c: Any) -> tuple[Any, Any, Any]:
@@ -139,6 +147,15 @@ def _octic(x: Any, a: Any, b: Any, c: Any) -> tuple[Any, Any, Any]:
         ((8.0 * square + 6.0 * a) * cube + 3.0 * b) * square,
         ((56.0 * square + 30.0 * a) * cube + 6.0 * b) * x,
     )
+
+
+def _height(x: Any, a: Any, b: Any, c: Any) -> tuple[Any, Any]:
+    """The polynomial at a critical point, and whether it is zero to rounding."""
+    square = x * x
+    cube = square * x
+    size = ((square - a) * cube + abs(b)) * cube - c
+    value = ((square + a) * cube + b) * cube + c
+    return value, abs(value) <= 32.0 * _EPS * size
 
 
 def _quintic(x: Any, a: Any, b: Any) -> tuple[Any, Any, Any]:
@@ -166,31 +183,45 @@ def positive_roots(a: ArrayLike, b: ArrayLike, c: ArrayLike) -> tuple[Array, Arr
     double : ndarray of bool, shape (m, 3)
         Marks a root that is double to rounding (two roots run together); it is listed once.
     """
-    return _roots_of(*(np.atleast_1d(np.asarray(k, dtype=float)) for k in (a, b, c)))
+    roots, double, _ = roots_and_waves(*(np.atleast_1d(np.asarray(k, dtype=float)) for k in (a, b, c)))
+    return roots, double
 
 
-def _roots_of(a: Array, b: Array, c: Array) -> tuple[Array, Array]:
+def roots_and_waves(a: Array, b: Array, c: Array) -> tuple[Array, Array, Array]:
+    """As :func:`positive_roots`, and the two critical points (2, m): peak and valley, NaN without a wave."""
     m = a.size
+    if m <= _FEW:
+        alone = [_roots_alone(*lane) for lane in zip(a.tolist(), b.tolist(), c.tolist(), strict=True)]
+        return (
+            np.array([one[0] for one in alone]).reshape(m, 3),
+            np.array([one[1] for one in alone], dtype=bool).reshape(m, 3),
+            np.array([one[2] for one in alone]).reshape(m, 2).T,
+        )
+    waves = np.full((2, m), np.nan)
     roots = np.full((m, 3), np.nan)
     double = np.zeros((m, 3), dtype=bool)
     with np.errstate(all="ignore"):
-        unit = np.maximum(np.maximum(np.sqrt(np.abs(a)), np.abs(b) ** 0.2), np.abs(c) ** 0.125)
-        good = np.isfinite(a) & np.isfinite(b) & np.isfinite(c) & (unit > 0.0) & (a <= 0.0) & (c <= 0.0)
+        least = np.maximum(np.maximum(np.sqrt(np.abs(a)), np.abs(b) ** 0.2), _eighth_root(np.abs(c)))
+        good = np.isfinite(a) & np.isfinite(b) & np.isfinite(c) & (least > 0.0) & (a <= 0.0) & (c <= 0.0)
         if not good.any():
-            return roots, double
+            return roots, double, waves
         lanes = np.flatnonzero(good)
-        unit = unit[lanes]
-        a, b, c = a[lanes] / unit**2, b[lanes] / unit**5, c[lanes] / unit**8
+        # A power of two scales without rounding.
+        least = least[lanes]
+        unit = np.ldexp(1.0, np.frexp(least)[1])
+        least = least / unit * (1.0 - 1e-9)
+        square = unit * unit
+        fourth = square * square
+        a, b, c = a[lanes] / square, b[lanes] / (fourth * unit), c[lanes] / (fourth * fourth)
         # Cauchy-like bound: each other term is below x^8 / 3.
-        top = np.maximum(np.maximum(np.sqrt(3.0 * -a), np.abs(3.0 * b) ** 0.2), (3.0 * -c) ** 0.125) * (1.0 + 1e-9)
-        floor = np.minimum((-0.5 * c) ** 0.125, np.where(b > 0.0, np.cbrt(-0.5 * c / b), np.inf)) * (1.0 - 1e-9)
+        top = np.maximum(np.maximum(np.sqrt(3.0 * -a), np.abs(3.0 * b) ** 0.2), _eighth_root(3.0 * -c)) * (1.0 + 1e-9)
+        floor = np.minimum(_eighth_root(-0.5 * c), np.where(b > 0.0, np.cbrt(-0.5 * c / b), np.inf)) * (1.0 - 1e-9)
         floor = np.maximum(floor, 1e-60)
         turn = np.sqrt(-0.45 * a)
         dip = _quintic(turn, a, b)[0]
         humps = (b > 0.0) & (dip < 0.0)
         upper = np.full(lanes.size, np.nan)
-        need = humps | (b <= 0.0)
-        k = np.flatnonzero(need)
+        k = np.flatnonzero(humps)
         if k.size:
             start = np.maximum(turn[k], 1e-60)
             upper[k] = _safe_halley(_quintic, (a[k], b[k]), start, top[k], np.ones(k.size, bool))
@@ -201,13 +232,8 @@ def _roots_of(a: Array, b: Array, c: Array) -> tuple[Array, Array]:
             start = np.cbrt(0.5 * b[h] / -a[h]) * (1.0 - 1e-9)
             lower[h] = _safe_halley(_quintic, (a[h], b[h]), start, turn[h], np.zeros(h.size, bool))
 
-        def height(x: Array) -> tuple[Array, Array]:
-            size = x**8 - a * x**6 + np.abs(b) * x**3 - c
-            value = _octic(x, a, b, c)[0]
-            return value, np.abs(value) <= 32.0 * _EPS * size
-
-        peak, peak_zero = height(lower)
-        valley, valley_zero = height(upper)
+        peak, peak_zero = _height(lower, a, b, c)
+        valley, valley_zero = _height(upper, a, b, c)
         peak_zero &= humps
         valley_zero &= humps & ~peak_zero & (peak > 0.0)
         high_peak = humps & (peak > 0.0) & ~peak_zero
@@ -216,7 +242,8 @@ def _roots_of(a: Array, b: Array, c: Array) -> tuple[Array, Array]:
         slot[0] = high_peak
         slot[1] = high_peak & (valley < 0.0) & ~valley_zero
         slot[2] = (b <= 0.0) | (humps & (valley < 0.0) & ~valley_zero) | ((b > 0.0) & ~humps)
-        lows = np.stack((floor, lower, np.where(need, upper, floor)))
+        # Without a positive term but the first the root is above that with each other term alone.
+        lows = np.stack((floor, lower, np.where(humps, upper, np.where(b <= 0.0, least, floor))))
         highs = np.stack((lower, upper, top))
         which, lane = np.nonzero(slot)
         found = np.full((3, lanes.size), np.nan)
@@ -230,7 +257,60 @@ def _roots_of(a: Array, b: Array, c: Array) -> tuple[Array, Array]:
         order = np.argsort(found, axis=0)
         roots[lanes] = (np.take_along_axis(found, order, 0) * unit).T
         double[lanes] = np.take_along_axis(marks, order, 0).T
-    return roots, double
+        waves[:, lanes] = np.where(humps, np.stack((lower, upper)) * unit, np.nan)
+    return roots, double, waves
+
+
+_ROW = tuple[list[float], list[bool], tuple[float, float]]
+
+
+def _roots_alone(a: float, b: float, c: float) -> _ROW:
+    """Roots, marks and wave of one lane in plain floats: the same steps, and the same to the last bit."""
+    if not (isfinite(a) and isfinite(b) and isfinite(c) and a <= 0.0 and c <= 0.0):
+        return [_NONE] * 3, [False] * 3, (_NONE, _NONE)
+    least = max(sqrt(abs(a)), float(np.power(abs(b), 0.2)), sqrt(sqrt(sqrt(abs(c)))))
+    if not least > 0.0:
+        return [_NONE] * 3, [False] * 3, (_NONE, _NONE)
+    unit = ldexp(1.0, frexp(least)[1])
+    least = least / unit * (1.0 - 1e-9)
+    square = unit * unit
+    fourth = square * square
+    a, b, c = a / square, b / (fourth * unit), c / (fourth * fourth)
+    top = max(sqrt(3.0 * -a), float(np.power(abs(3.0 * b), 0.2)), sqrt(sqrt(sqrt(3.0 * -c)))) * (1.0 + 1e-9)
+    floor = sqrt(sqrt(sqrt(-0.5 * c)))
+    if b > 0.0:
+        floor = min(floor, float(np.cbrt(-0.5 * c / b)))
+    floor = max(floor * (1.0 - 1e-9), 1e-60)
+    turn = sqrt(-0.45 * a)
+    wave = b > 0.0 and _quintic(turn, a, b)[0] < 0.0
+    peak = valley = _NONE
+    if wave:
+        valley = _safe_halley_alone(_quintic, max(turn, 1e-60), top, True, a, b)
+    if wave:
+        # On (0, turn) the quintic exceeds 3 b - 6 |a| x^3, so its root lies above this.
+        peak = _safe_halley_alone(_quintic, float(np.cbrt(0.5 * b / -a)) * (1.0 - 1e-9), turn, False, a, b)
+    found: list[tuple[float, bool]] = []
+    if not wave:
+        found.append((_safe_halley_alone(_octic, least if b <= 0.0 else floor, top, True, a, b, c), False))
+    else:
+        high, at_peak = _height(peak, a, b, c)
+        low, at_valley = _height(valley, a, b, c)
+        at_valley = at_valley and not at_peak and high > 0.0
+        if at_peak:
+            found.append((peak, True))
+        elif high > 0.0:
+            found.append((_safe_halley_alone(_octic, floor, peak, True, a, b, c), False))
+        if at_valley:
+            found.append((valley, True))
+        elif low < 0.0:
+            if high > 0.0 and not at_peak:
+                found.append((_safe_halley_alone(_octic, peak, valley, False, a, b, c), False))
+            found.append((_safe_halley_alone(_octic, valley, top, True, a, b, c), False))
+    found.sort()
+    blank = 3 - len(found)
+    roots = [x * unit for x, _ in found] + [_NONE] * blank
+    marks = [mark for _, mark in found] + [False] * blank
+    return roots, marks, (peak * unit, valley * unit) if wave else (_NONE, _NONE)
 
 
 class GaussEstimate(NamedTuple):
@@ -259,13 +339,13 @@ def gauss_estimate(lines: Lines, poly: RangePolynomial, root_km: Array) -> Gauss
     with np.errstate(all="ignore"):
         tau1, tau3 = lines.t_s[0], lines.t_s[2]
         tau = tau3 - tau1
-        u = lines.gm_km3_s2 / root_km**3
+        u = lines.gm_km3_s2 / (root_km * root_km * root_km)
         c1 = tau3 / tau * (1.0 + u / 6.0 * (tau**2 - tau3**2))
         c3 = -tau1 / tau * (1.0 + u / 6.0 * (tau**2 - tau1**2))
         along = ranges_of_weights(lines, poly, c1, c3)
         r = lines.observer_km + along[:, None, :] * lines.effective
         f1, f3 = 1.0 - 0.5 * u * tau1**2, 1.0 - 0.5 * u * tau3**2
-        g1, g3 = tau1 - u * tau1**3 / 6.0, tau3 - u * tau3**3 / 6.0
+        g1, g3 = tau1 - u * (tau1 * tau1 * tau1) / 6.0, tau3 - u * (tau3 * tau3 * tau3) / 6.0
         v2 = (f1 * r[2] - f3 * r[0]) / (f1 * g3 - f3 * g1)
     return GaussEstimate(along, r, v2)
 

@@ -17,7 +17,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from firstarc.errors import UsageError
-from firstarc.preliminary.lines_of_sight import Array, angle, cross, dot, norm
+from firstarc.preliminary.lines_of_sight import Array, cross, crosses, dot, norm, separations_rad
 from firstarc.results import Code, Status
 
 #: Largest angle of r1 out of the plane of r2 and r3 that still counts as coplanar (common practice: 2 to
@@ -62,8 +62,8 @@ def gibbs_vectors(r: Array) -> tuple[Array, Array, Array]:
     # Differences of lengths without cancellation.
     s12 = dot(back, r1 + r2) / (size[0] + size[1])
     s32 = dot(ahead, r3 + r2) / (size[2] + size[1])
-    d = cross(ahead, back)
-    n = size[1] * d + s12 * cross(r2, ahead) - s32 * cross(r2, back)
+    d, by_ahead, by_back = crosses((ahead, r2, r2), (back, ahead, back))
+    n = size[1] * d + s12 * by_ahead - s32 * by_back
     s = -back * s32 + ahead * s12
     return n, d, s
 
@@ -127,7 +127,7 @@ def gibbs(r_km: ArrayLike, gm_km3_s2: float) -> GibbsSolution:
         n, d, s = gibbs_vectors(r)
         v2 = gibbs_velocity(r, gm_km3_s2)
         out_of_plane = np.degrees(coplanarity_rad(r))
-        parts = np.stack((angle(r[0], r[1]), angle(r[1], r[2]), angle(r[0], r[2])))
+        parts = separations_rad(r)
         products = dot(n, d)
     status = tuple(
         gibbs_status(r[..., k], parts[:, k], float(out_of_plane[k]), float(products[k]), v2[:, k])

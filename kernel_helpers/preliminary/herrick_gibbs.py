@@ -28,7 +28,8 @@ def herrick_gibbs_velocity(r: Array, t: Array, gm: float) -> Array:
     """Velocity at the middle of component-first positions (3, 3, m) at times (3, m)."""
     with np.errstate(all="ignore"):
         first, last, whole = t[1] - t[0], t[2] - t[1], t[2] - t[0]
-        pull = gm / (12.0 * norm(r) ** 3)
+        size = norm(r)
+        pull = gm / (12.0 * size * size * size)
         # The 1/dt terms as differences from the middle position: no cancellation.
         secant = (r[2] - r[1]) * (first / (last * whole)) - (r[0] - r[1]) * (last / (first * whole))
         velocity: Array = secant + (

@@ -34,6 +34,8 @@ _SERIES_LIMIT = 0.2
 _TERMS = 26
 #: Sine of the half transfer angle, and its cosine, below which the plane of the orbit is lost.
 COLLINEAR = 1e-11
+#: Longest dimensionless time that is tried: near x = -1 and 1 more is lost in the rounding of x.
+_LONGEST = 1e10
 #: Part of the limit N pi down to which the quickest orbit may stand in.
 _NEARLY = 0.8
 #: Nearest to x = -1 (an ellipse of endless period) that is tried.
@@ -57,7 +59,7 @@ class LambertCode(IntEnum):
             LambertCode.NO_ORBIT: "no orbit with so many revolutions in this time",
             LambertCode.NO_PLANE: "both positions on one line through the centre: no plane",
             LambertCode.BAD_INPUT: "a position is zero or not finite, or the time is not positive",
-            LambertCode.NOT_CONVERGED: "not converged",
+            LambertCode.NOT_CONVERGED: "not converged (the time may be too long for the rounding)",
         }[self]
 
 
@@ -120,33 +122,34 @@ def flight_time(
     -------
     t, t1, t2, t3 : ndarray, shape (m,)
     """
-    u = (1.0 - x) * (1.0 + x)
-    square = lam * lam
-    y = np.sqrt(np.where(u > 0.5, chord_part + square * x * x, 1.0 - square * u))
-    product = lam * x
-    total = y + np.abs(product)
-    # y - lam x without cancellation.
-    eta = np.where(product > 0.0, chord_part / total, total)
-    z = 0.5 * (1.0 - lam - x * eta)
-    root = np.sqrt(np.abs(u))
-    swing = np.where(u > 0.0, np.arctan2(eta * root, x * y + lam * u), np.arcsinh(eta * root))
-    bend = chord_part * lam * square / (y * y * y)
-    t = (swing / root - x + lam * y) / u
-    t1 = (3.0 * t * x - 2.0 + 2.0 * square * product / y) / u
-    t2 = (3.0 * t + 5.0 * x * t1 + 2.0 * bend) / u
-    near = np.flatnonzero(np.abs(z) < _SERIES_LIMIT)
-    if near.size:
-        parts = (k[near] for k in (z, lam, square, x, y, eta))
-        t[near], t1[near], t2[near] = _near_parabola(*parts)
-    if turns.any():
-        whole = turns * np.pi / (np.abs(u) * root)
-        with_turns = turns > 0
-        t = np.where(with_turns, t + whole, t)
-        t1 = np.where(with_turns, t1 + 3.0 * x * whole / u, t1)
-        t2 = np.where(with_turns, t2 + (3.0 + 12.0 * x * x) * whole / (u * u), t2)
-    if not with_third:
-        return t, t1, t2, t2
-    return t, t1, t2, (7.0 * x * t2 + 8.0 * t1 - 6.0 * bend * square * x / (y * y)) / u
+    with np.errstate(all="ignore"):
+        u = (1.0 - x) * (1.0 + x)
+        square = lam * lam
+        y = np.sqrt(np.where(u > 0.5, chord_part + square * x * x, 1.0 - square * u))
+        product = lam * x
+        total = y + np.abs(product)
+        # y - lam x without cancellation.
+        eta = np.where(product > 0.0, chord_part / total, total)
+        z = 0.5 * (1.0 - lam - x * eta)
+        root = np.sqrt(np.abs(u))
+        swing = np.where(u > 0.0, np.arctan2(eta * root, x * y + lam * u), np.arcsinh(eta * root))
+        bend = chord_part * lam * square / (y * y * y)
+        t = (swing / root - x + lam * y) / u
+        t1 = (3.0 * t * x - 2.0 + 2.0 * square * product / y) / u
+        t2 = (3.0 * t + 5.0 * x * t1 + 2.0 * bend) / u
+        near = np.flatnonzero(np.abs(z) < _SERIES_LIMIT)
+        if near.size:
+            parts = (k[near] for k in (z, lam, square, x, y, eta))
+            t[near], t1[near], t2[near] = _near_parabola(*parts)
+        if turns.any():
+            whole = turns * np.pi / (np.abs(u) * root)
+            with_turns = turns > 0
+            t = np.where(with_turns, t + whole, t)
+            t1 = np.where(with_turns, t1 + 3.0 * x * whole / u, t1)
+            t2 = np.where(with_turns, t2 + (3.0 + 12.0 * x * x) * whole / (u * u), t2)
+        if not with_third:
+            return t, t1, t2, t2
+        return t, t1, t2, (7.0 * x * t2 + 8.0 * t1 - 6.0 * bend * square * x / (y * y)) / u
 
 
 def _near_parabola(z: Array, lam: Array, square: Array, x: Array, y: Array, eta: Array) -> tuple[Array, Array, Array]:
@@ -331,6 +334,7 @@ def _lambert(
     code[(sin_half < COLLINEAR) | (cos_half < COLLINEAR)] = LambertCode.NO_PLANE
     good = np.isfinite(s) & (n1 > 0.0) & (n2 > 0.0) & (dt > 0.0) & np.isfinite(t) & (t > 0.0)
     code[~good] = LambertCode.BAD_INPUT
+    code[(code == LambertCode.SOLVED) & (t > _LONGEST)] = LambertCode.NOT_CONVERGED
     x = np.full(m, np.nan)
     k = np.flatnonzero(code == 0)
     if k.size:

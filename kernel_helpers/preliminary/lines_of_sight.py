@@ -11,6 +11,7 @@ r(t - rho/c) = R + rho L' holds with rho the light path; see :mod:`firstarc.dyna
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -19,10 +20,19 @@ from firstarc.constants import C_KM_S
 from firstarc.errors import UsageError
 from firstarc.twobody.kepler import Array
 
+#: Above this many lanes sums run over whole rows, below in one call; the digits are the same.
+_MANY = 256
+
 
 def dot(a: Array, b: Array) -> Array:
     """Scalar products of component-first vectors."""
-    product: Array = np.add.reduce(a * b, axis=-2)
+    product: Array
+    if a.shape[-1] > _MANY:
+        product = a[..., 0, :] * b[..., 0, :]
+        product += a[..., 1, :] * b[..., 1, :]
+        product += a[..., 2, :] * b[..., 2, :]
+    else:
+        product = np.add.reduce(a * b, axis=-2)
     return product
 
 
@@ -37,9 +47,16 @@ def cross(a: Array, b: Array) -> Array:
     return out
 
 
+def crosses(first: tuple[Array, ...], second: tuple[Array, ...]) -> Array | list[Array]:
+    """Vector products of several pairs of equal shape: in one call where there are few lanes."""
+    if first[0].shape[-1] > _MANY:
+        return [cross(a, b) for a, b in zip(first, second, strict=True)]
+    return cross(np.array(first), np.array(second))
+
+
 def norm(a: Array) -> Array:
     """Lengths of component-first vectors."""
-    length: Array = np.sqrt(np.add.reduce(a * a, axis=-2))
+    length: Array = np.sqrt(dot(a, a))
     return length
 
 
@@ -73,6 +90,11 @@ class Lines:
     t_s: Array
     gm_km3_s2: float
     per_c: float
+
+    @cached_property
+    def frame(self) -> Array:
+        """East, north and along each line, (3 axes, 3 observations, 3, m)."""
+        return tangent_frame(self.unit)
 
     def take(self, lanes: Array) -> Lines:
         """The chosen lanes, in the given order."""
@@ -186,7 +208,10 @@ def determinant(unit: Array) -> Array:
     return dot(middle, cross(unit[2] - middle, unit[0] - middle))
 
 
-def determinant_sigma(unit: Array, covariance: Array) -> Array:
+_NEXT, _AFTER = np.array([1, 2, 0]), np.array([2, 0, 1])
+
+
+def determinant_sigma(unit: Array, covariance: Array, frame: Array | None = None) -> Array:
     """First-order sigma of the determinant.
 
     Parameters
@@ -194,15 +219,19 @@ def determinant_sigma(unit: Array, covariance: Array) -> Array:
     unit : ndarray, shape (3, 3, m)
     covariance : ndarray, shape (3, 2, 2)
         Of (d alpha cos delta, d delta) of each line, rad^2.
+    frame : ndarray, optional
+        :func:`tangent_frame` of ``unit``, where it is at hand.
 
     Returns
     -------
     ndarray, shape (m,)
     """
-    frame = tangent_frame(unit)[:2]
-    normals = np.stack((cross(unit[1], unit[2]), cross(unit[2], unit[0]), cross(unit[0], unit[1])))
-    slope = dot(frame, normals[None])
-    result: Array = np.sqrt(np.einsum("aim,iab,bim->m", slope, covariance, slope))
+    axes = (tangent_frame(unit) if frame is None else frame)[:2]
+    slope = dot(axes, cross(unit[_NEXT], unit[_AFTER])[None])
+    first, second = slope[0], slope[1]
+    variance = covariance[:, 0, 0, None] * first * first + covariance[:, 1, 1, None] * second * second
+    variance += 2.0 * covariance[:, 0, 1, None] * first * second
+    result: Array = np.sqrt(np.add.reduce(variance, axis=0))
     return result
 
 
@@ -216,6 +245,9 @@ def angle_covariance(sigma_rad: ArrayLike, correlation: ArrayLike | None = None)
     return out
 
 
+_FROM, _TO = np.array([0, 1, 0]), np.array([1, 2, 2])
+
+
 def separations_rad(unit: Array) -> Array:
-    """Angles between lines 1-2, 2-3 and 1-3, shape (3, m)."""
-    return np.stack((angle(unit[0], unit[1]), angle(unit[1], unit[2]), angle(unit[0], unit[2])))
+    """Angles between vectors 1-2, 2-3 and 1-3 of component-first (3, 3, m), shape (3, m)."""
+    return angle(unit[_FROM], unit[_TO])

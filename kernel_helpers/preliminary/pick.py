@@ -2,8 +2,9 @@
 
 Every trial triple is solved for all its roots, and each orbit is held against all observations. Orbits that the
 bulk of the observations agree with are kept (the median of the residuals in sigmas, so that one bad observation
-cannot spoil the choice, nor be part of it unseen); among their triples the one whose lines of sight stand farthest
-out of one plane, in sigmas of the determinant, wins: there the slant ranges are best fixed.
+cannot spoil the choice, nor be part of it unseen). Of their triples those whose lines of sight stand farthest out of
+one plane, in sigmas of the determinant, are solved again with their noise, and the one with the smallest predicted
+error of position and velocity wins.
 """
 
 from __future__ import annotations
@@ -15,13 +16,18 @@ from numpy.typing import NDArray
 
 from firstarc.dynamics.light_time import predicted_directions, residuals_rad
 from firstarc.errors import UsageError
-from firstarc.preliminary.batch import solve_triples
+from firstarc.preliminary.batch import SolvedTriples, solve_triples
+from firstarc.preliminary.candidates import solve_triple
 from firstarc.preliminary.lines_of_sight import Array, cross, determinant, dot
 
 #: Observations from which trial triples are made, and those that the orbits are held against, at most.
 TRIAL_ROWS, JUDGE_ROWS = 12, 60
 #: Orbits count as agreeing with the bulk up to this factor of the best median, or up to this many sigmas.
 NEAR_BEST, NEAR_SIGMA = 1.5, 1.5
+#: A median residual of more sigmas is no agreement.
+DISAGREE_SIGMA = 5.0
+#: Triples whose error is predicted in full.
+SHORTLIST = 24
 
 
 def choose_pick(
@@ -86,14 +92,53 @@ def choose_pick(
     near = np.unique(found.triple[good[misfit <= limit]])
     chosen = triples[near]
     strength = _determinant_in_sigmas(los[chosen].transpose(1, 2, 0), sigma_rad[chosen])
-    best = int(np.argmax(strength))
+    short = np.argsort(-strength, kind="stable")[:SHORTLIST]
+    errors = np.array(
+        [
+            _predicted_error(
+                los[rows], observer_km[rows], t_s[rows], gm_km3_s2,
+                None if center_velocity_km_s is None else center_velocity_km_s[rows],
+                light_time, sigma_rad[rows], body_radius_km, _best_root(found, good, misfit, int(near[k])),
+            )
+            for k, rows in zip(short, chosen[short], strict=True)
+        ]
+    )  # fmt: skip
+    best = int(short[int(np.argmin(errors))]) if np.isfinite(errors).any() else int(short[0])
     agrees = misfit[found.triple[good] == near[best]].min()
+    least = float(np.min(errors)) if np.isfinite(errors).any() else float("nan")
+    predicted = f"{100.0 * least:.2g} % of distance and speed" if np.isfinite(least) else "not to be had"
+    if agrees > DISAGREE_SIGMA:
+        agreement = "none gives an orbit that the other observations agree with; among those that come nearest"
+    else:
+        agreement = f"{len(near)} give an orbit that the other observations agree with; of these"
     reason = (
-        f"of {len(triples)} picks tried, {len(near)} give an orbit that the other observations agree with; of these "
-        f"the lines of sight stand farthest out of one plane (determinant {strength[best]:.3g} times its sigma, median "
-        f"residual {agrees:.2g} sigma)."
+        f"of {len(triples)} picks tried, {agreement} this has the smallest predicted error ({predicted}; determinant "
+        f"{strength[best]:.3g} times its sigma, median residual of the others {agrees:.2g} sigma)."
     )
     return _three(chosen[best]), reason
+
+
+def _best_root(found: SolvedTriples, good: NDArray[np.int64], misfit: Array, triple: int) -> float:
+    """Root of the orbit of a triple that the observations agree with best."""
+    mine = np.flatnonzero(found.triple[good] == triple)
+    return float(found.root_km[good[mine[int(np.argmin(misfit[mine]))]]])
+
+
+def _predicted_error(
+    los: Array, observer_km: Array, t_s: Array, gm: float, moving: Array | None, light_time: bool,
+    sigma_rad: Array, body_radius_km: float, root_km: float,
+) -> float:  # fmt: skip
+    """Sigma of the weakest direction of the state, as part of distance and speed; inf without an orbit."""
+    solution = solve_triple(
+        los, observer_km, t_s, gm, center_velocity_km_s=moving, light_time=light_time, sigma_rad=sigma_rad,
+        body_radius_km=body_radius_km,
+    )  # fmt: skip
+    good = [one for one in solution.candidates if one.admissible and one.converged.covariance is not None]
+    if not good:
+        return float("inf")
+    final = min(good, key=lambda one: abs(one.root_km - root_km)).converged
+    size = np.repeat([np.linalg.norm(final.state[:3]), np.linalg.norm(final.state[3:])], 3)
+    return float(np.sqrt(max(np.linalg.eigvalsh(final.covariance / np.outer(size, size))[-1], 0.0)))
 
 
 def _determinant_in_sigmas(unit: Array, sigma_rad: Array) -> Array:

@@ -47,6 +47,12 @@ class Starts(NamedTuple):
     key: Array
 
 
+def scale_km(lines: Lines) -> float:
+    """The observer's distance from the centre, unit of the scan; 0 where there is none to scale by."""
+    size = float(norm(lines.observer_km[1])[0])
+    return size if 1e-30 < size < 1e30 else 0.0
+
+
 def reach_km(lines: Lines, first_km: Array, body_radius_km: float) -> Array:
     """How far apart both outer ranges can be, for each first range (m,)."""
     gm = lines.gm_km3_s2
@@ -67,7 +73,7 @@ def grid(lines: Lines, body_radius_km: float, revolutions: int = 0) -> tuple[Arr
 
     With whole revolutions the grid is finer, and ends where an ellipse of that many in the time cannot reach.
     """
-    size = float(norm(lines.observer_km[1])[0])
+    size = scale_km(lines)
     low, high = np.log(NEAREST * size), np.log(FARTHEST * size)
     rows, columns = FIRST_STEPS, LAST_STEPS
     if revolutions:

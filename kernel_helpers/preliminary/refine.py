@@ -12,12 +12,34 @@ Replacing f and g outright, the textbook loop, diverges for most distant satelli
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import NamedTuple
+from math import isfinite, sqrt
+from typing import Any, NamedTuple
 
 import numpy as np
 
-from firstarc.preliminary.lines_of_sight import Array, Lines, cross, dot, tangent_frame
-from firstarc.twobody.kepler import Universal, battin_c, lagrange, solve_universal
+from firstarc.preliminary.lines_of_sight import Array, Lines
+from firstarc.preliminary.sight_equations import Equations, Orbit, Sight, equations, middle_orbit, newton_step, sighted
+from firstarc.preliminary.sight_look import (
+    FINAL,
+    TIGHT,
+    Geometry,
+    Lane,
+    LaneLook,
+    Look,
+    Seen,
+    angle_map,
+    both_lines,
+    geometry,
+    lanes_of,
+    look,
+    look_alone,
+    loose_alone,
+    start_alone,
+    start_anomalies,
+)
+from firstarc.twobody.near_anomaly import Anomaly, near_anomaly
+
+__all__ = ["Geometry", "HistoryRow", "Look", "Refined", "angle_map", "geometry", "joined", "look", "refine", "untried"]
 
 #: Aim for the miss of each line, rad; rounding usually allows it.
 MISS_AIM_RAD = 1e-13
@@ -27,6 +49,12 @@ MAX_ITERATIONS = 25
 _SMALLEST_STEP = 1.0 / 512.0
 #: Lanes are repacked once fewer than this part of them still moves.
 _WORTH_LEAVING = 0.8
+#: Up to this many lanes plain floats are quicker than arrays; the digits are the same.
+_FEW = 12
+#: Lanes searched side by side: their rows stay in the cache.
+_BLOCK = 4096
+#: Steps of a block before what is left of all blocks goes on together.
+_TOGETHER = 3
 
 
 class HistoryRow(NamedTuple):
@@ -52,6 +80,8 @@ class Refined:
     iterations : ndarray of int, shape (m,)
     history : tuple of HistoryRow
         Empty unless asked for.
+    looks : tuple
+        With the history: what :class:`Look` keeps of each lane's orbit.
     """
 
     range_km: Array
@@ -60,6 +90,7 @@ class Refined:
     converged: Array
     iterations: Array
     history: tuple[HistoryRow, ...] = ()
+    looks: tuple[LaneLook | None, ...] = ()
 
     def take(self, lanes: Array) -> Refined:
         """The chosen lanes, in the given order."""
@@ -71,6 +102,7 @@ class Refined:
             self.converged[lanes],
             self.iterations[lanes],
             history,
+            tuple(self.looks[k] for k in lanes) if self.looks else (),
         )
 
 
@@ -90,6 +122,7 @@ def joined(first: Refined, second: Refined, lanes: Array) -> Refined:
         np.concatenate((first.converged, second.converged)),
         np.concatenate((first.iterations, second.iterations)),
         history,
+        (*first.looks, *second.looks) if history else (),
     )
 
 
@@ -99,179 +132,94 @@ def untried(range_km: Array, v2_km_s: Array) -> Refined:
     nothing = np.full((3, m), np.nan)
     history = (HistoryRow(np.array(range_km), np.full(m, np.nan), nothing),)
     none = np.zeros(m, dtype=int)
-    return Refined(np.array(range_km), np.array(v2_km_s), nothing.copy(), none.astype(bool), none, history)
+    return Refined(np.array(range_km), np.array(v2_km_s), nothing.copy(), none.astype(bool), none, history, (None,) * m)
 
 
-class Geometry(NamedTuple):
-    """What stays fixed while an orbit is sought: frames of the lines and projections on them.
-
-    Arc axis: first and last observation. ``frame`` (3 axes, 2 arcs, 3, m): east, north, along.
-    """
-
-    frame: Array
-    on_r2: Array
-    on_l2: Array
-    on_observer: Array
-    on_los: Array
-    l2: Array
-    observer2: Array
-    t_s: Array
-    gm: float
-    per_c: float
-
-    def take(self, lanes: Array | slice) -> Geometry:
-        parts = {name: part[..., lanes] for name, part in self._asdict().items() if name not in ("gm", "per_c")}
-        return self._replace(**parts)
+def _step_alone(lane: Lane, state: tuple[float, ...], seen: Seen, far: float) -> tuple[float, ...]:
+    """Newton's step, limited: it may not turn the range over, nor change the velocity by its own size."""
+    one, _, two, _ = both_lines(lane, state, seen)
+    drho, dx, dy, dz, outer1, outer3 = newton_step(one, two)
+    orbit, rho2 = seen[0], abs(state[1])
+    speed = sqrt(2.0 * lane.gm / orbit.r0) + sqrt(orbit.vx * orbit.vx + orbit.vy * orbit.vy + orbit.vz * orbit.vz)
+    reach = 0.8 * rho2 if drho < 0.0 else 4.0 * rho2 + far
+    limit, size, change = 1.0, abs(drho), sqrt(dx * dx + dy * dy + dz * dz)
+    if size > reach:
+        limit = reach / size
+    if change > speed:
+        limit = min(limit, speed / change)
+    return limit * outer1, limit * drho, limit * outer3, limit * dx, limit * dy, limit * dz
 
 
-def geometry(lines: Lines) -> Geometry:
-    """Frames and projections of each lane."""
-    frame = tangent_frame(lines.unit[::2])
-    l2, observer2 = lines.effective[1], lines.observer_km[1]
-    return Geometry(
-        frame,
-        dot(frame, observer2),
-        dot(frame, l2),
-        dot(frame, lines.observer_km[::2][None]),
-        dot(frame, lines.effective[::2][None]),
-        l2,
-        observer2,
-        lines.t_s[::2],
-        lines.gm_km3_s2,
-        lines.per_c,
-    )
+def _far_alone(lane: Lane) -> float:
+    x, y, z = lane.middle[3:]
+    return 0.1 * max(abs(x), abs(y), abs(z))
 
 
-class Look(NamedTuple):
-    """The orbit (rho2, v2) seen at the outer lines; arcs before lanes, axes of the frame first.
+class _Search:
+    """One lane of the search in plain floats."""
 
-    ``residual`` (3, 2, m) km is r_i - R_i - rho_i L'_i on the frame; the rest is what the partials need.
-    """
+    def __init__(self, lane: Lane, state: tuple[float, ...], s: tuple[float, float]):
+        self.lane, self.state, self.s = lane, state, s
+        self.done, self.shrink, self.merit = 0, 1.0, float("nan")
+        self.miss = (float("nan"), 0.0, float("nan"))
+        self.ranges = state[:3]
+        self.step: tuple[float, ...] | None = None
+        self.seen: Seen | None = None
+        self.history: list[tuple[tuple[float, ...], float, tuple[float, ...]]] = []
+        self.far = _far_alone(lane)
 
-    residual: Array
-    range_km: Array
-    miss_rad: Array
-    r2: Array
-    v2: Array
-    beta: Array
-    dt: Array
-    r0: Array
-    u: Universal
-    fg: tuple[Array, Array, Array, Array]
-    b_r0: Array
-    b_v0: Array
-    b_r: Array
-    b_v: Array
+    def begin(self) -> bool:
+        """First look; True if there is something to improve."""
+        try:
+            seen = look_alone(self.lane, self.state, *self.s)
+        except ZeroDivisionError:
+            return False
+        return self._keep(self.state, seen)
 
+    def _keep(self, state: tuple[float, ...], seen: Seen) -> bool:
+        """Take a look's orbit over and prepare the next step."""
+        at1, seen1, miss1, at3, seen3, miss3 = seen[2], seen[3], seen[4], seen[6], seen[7], seen[8]
+        loose = loose_alone(seen, *self.s)
+        self.state, self.seen, self.s, self.merit = state, seen, (at1[0], at3[0]), miss1 + miss3
+        before = self.ranges
+        self.ranges = seen1.path / self.lane.first[13], state[1], seen3.path / self.lane.last[13]
+        self.miss = sqrt(miss1), 0.0, sqrt(miss3)
+        change = float("nan")
+        if self.history:
+            change = max(abs(a - b) / abs(a) if a else float("inf") for a, b in zip(self.ranges, before, strict=True))
+        self.history.append((self.ranges, change, self.miss))
+        if not (self.merit > MISS_AIM_RAD**2 or loose) or not isfinite(self.merit):
+            return False
+        try:
+            self.step = _step_alone(self.lane, state, seen, self.far)
+        except ZeroDivisionError:
+            return False
+        return True
 
-class System(NamedTuple):
-    """Partials of the residuals by v2 (``rows``: 3 axes, 2 arcs, 3, m) and by rho2 (``slope``: 3, 2, m).
-
-    ``closing`` (3, 2, m) is minus the partials by the own range of each outer line.
-    """
-
-    rows: Array
-    slope: Array
-    closing: Array
-    along_r: Array
-    along_v: Array
-
-
-def look(geo: Geometry, range_km: Array, v2: Array, s_start: Array | None = None) -> Look:
-    """Residuals of an orbit at the outer lines.
-
-    ``range_km`` (3, m) holds the ranges used for light time; the misses are taken at the best own range,
-    which ``Look.range_km`` returns.
-    """
-    gm, per_c = geo.gm, geo.per_c
-    rho2 = range_km[1]
-    r2 = geo.observer2 + rho2 * geo.l2
-    dt = geo.t_s
-    if per_c:
-        dt = dt - (range_km[::2] - rho2) * per_c
-    radius = np.sqrt(dot(r2, r2))
-    beta = 2.0 * gm / radius - dot(v2, v2)
-    twice = np.empty((3, *dt.shape))
-    twice[0], twice[1], twice[2] = radius, dot(r2, v2), beta
-    r0, eta, beta = twice
-    u = solve_universal(r0, eta, beta, dt, gm, s_start)
-    fg = f, g, ft, gt = lagrange(u, r0, dt, gm)
-    b_r0 = geo.on_r2 + rho2 * geo.on_l2
-    b_v0 = dot(geo.frame, v2)
-    b_r = f * b_r0 + g * b_v0
-    b_v = ft * b_r0 + gt * b_v0
-    away = b_r - geo.on_observer
-    own = away[2] / geo.on_los[2]
-    across = away[:2] - own * geo.on_los[:2]
-    residual = away - range_km[::2] * geo.on_los
-    miss = np.zeros((3, radius.size))
-    miss[::2] = np.sqrt(across[0] * across[0] + across[1] * across[1]) / np.abs(own)
-    ranges = range_km.copy()
-    ranges[::2] = own
-    return Look(residual, ranges, miss, r2, v2, beta, dt, r0, u, fg, b_r0, b_v0, b_r, b_v)
-
-
-def partials(geo: Geometry, seen: Look) -> System:
-    """Partials of the residuals of a look."""
-    gm = geo.gm
-    f, g, ft, gt = seen.fg
-    c = battin_c(seen.u, seen.beta, seen.dt, gm)
-    k = seen.r0 * (1.0 - f)
-    b_dv = seen.b_v - seen.b_v0
-    alpha = (k * (seen.b_r - seen.b_r0) + c * seen.b_v) / gm
-    gamma = (-1.0 / gm) * k * b_dv
-    rows = alpha[..., None, :] * seen.v2 + gamma[..., None, :] * seen.r2 + g[:, None, :] * geo.frame
-    # Effect of a displacement d of the middle position: along_v (v2 . d) + along_r (r2 . d) + f (frame . d).
-    along_v = (seen.u.r / gm) * b_dv
-    along_r = (k * seen.b_r + c * seen.b_v) / seen.r0**3 + ft * along_v
-    along_v = (gt - 1.0) * along_v
-    slope = along_v * dot(seen.v2, geo.l2) + along_r * dot(seen.r2, geo.l2) + f * geo.on_l2
-    closing = geo.on_los
-    if geo.per_c:
-        slope += geo.per_c * seen.b_v
-        closing = closing + geo.per_c * seen.b_v
-    return System(rows, slope, closing, along_r, along_v)
-
-
-def _eliminated(system: System) -> tuple[Array, Array, Array]:
-    """kappa, rows (2, 2, 3, m) and slope (2, 2, m) once each outer range is eliminated."""
-    kappa = system.closing[:2] / system.closing[2]
-    rows = system.rows[:2] - kappa[:, :, None, :] * system.rows[2]
-    slope = system.slope[:2] - kappa * system.slope[2]
-    return kappa, rows, slope
-
-
-def _solve(rows: Array, slope: Array, right: Array) -> tuple[Array, Array]:
-    """Solve rows . dv + slope drho = right for dv (..., 3, m) and drho; ``right`` (k, 2, 2, m) for k cases.
-
-    The two rows of an arc fix dv up to a multiple of their vector product, so that two equations remain.
-    """
-    a, b = rows[0, 0], rows[1, 0]
-    n = cross(a, b)
-    size = dot(n, n)
-    bn, na = cross(b, n) / size, cross(n, a) / size
-    w = -slope[0, 0] * bn - slope[1, 0] * na
-    # Last arc: dv = base + w drho + n x.
-    last = rows[:, 1]
-    p = dot(last, w) + slope[:, 1]
-    q = dot(last, n)
-    det = p[0] * q[1] - p[1] * q[0]
-    base = right[:, 0, 0, None, :] * bn + right[:, 1, 0, None, :] * na
-    rest = right[:, :, 1] - np.add.reduce(last * base[:, None], axis=-2)
-    drho = (rest[:, 0] * q[1] - rest[:, 1] * q[0]) / det
-    x = (p[0] * rest[:, 1] - p[1] * rest[:, 0]) / det
-    return base + w * drho[:, None, :] + n * x[:, None, :], drho
-
-
-def newton_step(geo: Geometry, seen: Look) -> tuple[Array, Array, Array]:
-    """Newton's correction: middle range (m,), velocity (3, m), and the outer ranges (2, m)."""
-    system = partials(geo, seen)
-    kappa, rows, slope = _eliminated(system)
-    residual = seen.residual
-    dv, drho = _solve(rows, slope, (kappa * residual[2] - residual[:2])[None])
-    dv, drho = dv[0], drho[0]
-    outer = (residual[2] + dot(system.rows[2], dv) + system.slope[2] * drho) / system.closing[2]
-    return drho, dv, outer
+    def run(self, iterations: int) -> None:
+        """Iterate until there is nothing to improve, or no means."""
+        while iterations > 0:
+            iterations -= 1
+            assert self.step is not None
+            shrink = self.shrink
+            trial = tuple([a + shrink * b for a, b in zip(self.state, self.step, strict=True)])
+            try:
+                seen = look_alone(self.lane, trial, *self.s)
+                better = seen[4] + seen[8] < self.merit
+            except ZeroDivisionError:
+                better = False
+            if better:
+                self.done += 1
+                self.shrink = min(1.0, shrink * 3.0)
+                if not self._keep(trial, seen):
+                    return
+            elif self.merit < MISS_LIMIT_RAD**2:
+                # What no longer improves below the limit has reached its rounding.
+                return
+            else:
+                self.shrink = shrink * 0.25
+                if self.shrink < _SMALLEST_STEP:
+                    return
 
 
 def refine(
@@ -280,6 +228,7 @@ def refine(
     v2_km_s: Array,
     keep_history: bool = False,
     iterations: int = MAX_ITERATIONS,
+    tried: Array | None = None,
 ) -> Refined:
     """Newton's iteration from a start to the two-body orbit through the three lines.
 
@@ -295,6 +244,8 @@ def refine(
         Keep every accepted iteration of every lane.
     iterations : int
         Largest number of steps tried.
+    tried : ndarray of bool, shape (m,), optional
+        Lanes to be refined; the others are returned as they are. All, by default.
 
     Returns
     -------
@@ -302,139 +253,249 @@ def refine(
         ``converged`` where every miss is at most ``MISS_LIMIT_RAD``.
     """
     with np.errstate(all="ignore"):
-        return _refine(lines, range_km, v2_km_s, keep_history, iterations)
+        if tried is not None and not keep_history:
+            chosen, order = np.flatnonzero(tried), np.arange(tried.size)
+            order[chosen] = tried.size + np.arange(chosen.size)
+            some = refine(lines.take(chosen), range_km[:, chosen], v2_km_s[:, chosen], False, iterations)
+            return joined(untried(range_km, v2_km_s), some, np.arange(chosen.size)).take(order)
+        geo = geometry(lines)
+        state = np.concatenate((range_km, v2_km_s), dtype=float)
+        if keep_history or state.shape[1] <= _FEW:
+            return _refined_alone(geo, state, keep_history, iterations, tried)
+        return _refined_lanes(geo, state, start_anomalies(geo, state), iterations)
 
 
-def _refine(lines: Lines, range_km: Array, v2_km_s: Array, keep_history: bool, iterations: int) -> Refined:
-    m = range_km.shape[1]
-    out_range, out_v, out_miss = np.array(range_km, float), np.array(v2_km_s, float), np.full((3, m), np.nan)
-    done_at = np.zeros(m, dtype=int)
-    history: list[HistoryRow] = []
-    lanes: Array | slice = slice(None)
-    geo = geometry(lines)
-    ranges, v2 = out_range.copy(), out_v.copy()
-    now = look(geo, ranges, v2)
-    merit = now.miss_rad[0] ** 2 + now.miss_rad[2] ** 2
-    out_range[:], out_miss[:] = now.range_km, now.miss_rad
+def _refined_alone(geo: Geometry, state: Array, keep_history: bool, iterations: int, tried: Array | None) -> Refined:
+    searches = []
+    wanted = [True] * state.shape[1] if tried is None else tried.tolist()
+    for lane, orbit, want in zip(lanes_of(geo), state.T.tolist(), wanted, strict=True):
+        search = _Search(lane, tuple(orbit), start_alone(lane, orbit))
+        if not want:
+            search.miss = (search.merit,) * 3
+        elif search.begin():
+            search.run(iterations)
+        searches.append(search)
+    m = len(searches)
+    history: tuple[HistoryRow, ...] = ()
     if keep_history:
-        history.append(HistoryRow(out_range.copy(), np.full(m, np.nan), out_miss.copy()))
-    step: tuple[Array, Array, Array] | None = None
-    shrink = np.ones(m)
-    going = merit > MISS_AIM_RAD**2
-    far = 0.1 * np.abs(geo.observer2).max(axis=0)
-    for _ in range(iterations):
-        if not going.any():
-            break
-        if np.count_nonzero(going) < _WORTH_LEAVING * going.size and going.size > 8:
-            keep = np.flatnonzero(going)
-            lanes = keep if isinstance(lanes, slice) else lanes[keep]
-            shrink, merit, going, far = shrink[keep], merit[keep], going[keep], far[keep]
-            ranges, v2, geo, now = ranges[:, keep], v2[:, keep], geo.take(keep), _take(now, keep)
-            step = None
-        if step is None:
-            step = newton_step(geo, now)
-        drho, dv, outer = step
-        speed = np.sqrt(2.0 * lines.gm_km3_s2 / now.r0[0]) + np.sqrt(dot(v2, v2))
-        # A step may not turn the range over, nor change the velocity by more than its own size.
-        rho2 = np.abs(ranges[1])
-        reach = np.where(drho < 0.0, 0.8 * rho2, 4.0 * rho2 + far)
-        limit = np.fmin(reach / np.abs(drho), speed / np.sqrt(dot(dv, dv)))
-        scale = shrink * np.fmin(1.0, limit)
-        trial_range = ranges.copy()
-        trial_range[1] += scale * drho
-        trial_range[::2] += scale * outer
-        trial_v = v2 + scale * dv
-        trial = look(geo, trial_range, trial_v, now.u.s)
-        new = trial.miss_rad[0] ** 2 + trial.miss_rad[2] ** 2
-        better = (new < merit) & going
-        whole = bool(better.all())
-        # What no longer improves below the limit has reached its rounding; elsewhere the step is shortened.
-        settled = ~better & (merit < MISS_LIMIT_RAD**2)
-        shrink = np.where(better, np.minimum(1.0, shrink * 3.0), shrink * 0.25)
-        if whole:
-            ranges, v2, now, merit, step = trial_range, trial_v, trial, new, None
-        elif better.any():
-            ranges = np.where(better, trial_range, ranges)
-            v2 = np.where(better, trial_v, v2)
-            now = _merged(better, trial, now)
-            merit = np.where(better, new, merit)
-            step = None
-        change = np.abs(now.range_km - out_range[:, lanes]) / np.abs(now.range_km) if keep_history else None
-        out_range[:, lanes], out_v[:, lanes], out_miss[:, lanes] = now.range_km, v2, now.miss_rad
-        done_at[lanes] += better
-        if change is not None and better.any():
-            largest = np.zeros(m)
-            largest[lanes] = change.max(axis=0)
-            history.append(HistoryRow(out_range.copy(), largest, out_miss.copy()))
-        # A merit that is not finite ends its lane; a trial that is not finite was a step too long.
-        going = going & ~settled & (merit > MISS_AIM_RAD**2) & (shrink >= _SMALLEST_STEP) & np.isfinite(merit)
-    converged = (out_miss <= MISS_LIMIT_RAD).all(axis=0) & np.isfinite(out_v).all(axis=0)
-    return Refined(out_range, out_v, out_miss, converged, done_at, tuple(history))
+        nothing = (float("nan"),) * 3
+        rows = [one.history or [(one.ranges, nothing[0], nothing)] for one in searches]
+        longest = max(map(len, rows), default=0)
+        table = np.array(
+            [[(*r, change, *miss) for r, change, miss in one + one[-1:] * (longest - len(one))] for one in rows]
+        ).reshape(m, longest, 7)
+        history = tuple(HistoryRow(row[:3], row[3], row[4:]) for row in table.transpose(1, 2, 0))
+    ranges = np.array([one.ranges for one in searches]).reshape(m, 3).T
+    v2 = np.array([one.state[3:] for one in searches]).reshape(m, 3).T
+    miss = np.array([one.miss for one in searches]).reshape(m, 3).T
+    done = np.array([one.done for one in searches], dtype=int)
+    looks: tuple[LaneLook | None, ...] = ()
+    if keep_history:
+        looks = tuple(None if one.seen is None else (one.lane, one.state, one.seen) for one in searches)
+    return _result(ranges, v2, miss, done, history, looks)
 
 
-def _take(seen: Look, lanes: Array | slice) -> Look:
-    u, fg = Universal(*(k[..., lanes] for k in seen.u)), tuple(k[..., lanes] for k in seen.fg)
-    parts = {name: part[..., lanes] for name, part in seen._asdict().items() if name not in ("u", "fg")}
-    return Look(**parts, u=u, fg=fg)  # type: ignore[arg-type]
+def _result(
+    ranges: Array,
+    v2: Array,
+    miss: Array,
+    done: Array,
+    history: tuple[HistoryRow, ...] = (),
+    looks: tuple[LaneLook | None, ...] = (),
+) -> Refined:
+    converged = np.asarray((miss <= MISS_LIMIT_RAD).all(axis=0) & np.isfinite(v2).all(axis=0))
+    return Refined(ranges, v2, miss, converged, done, history, looks)
 
 
-def _merged(mask: Array, new: Look, old: Look) -> Look:
-    u = Universal(*(np.where(mask, a, b) for a, b in zip(new.u, old.u, strict=False)))
-    fg = tuple(np.where(mask, a, b) for a, b in zip(new.fg, old.fg, strict=False))
-    old_parts = old._asdict()
+def _look_lanes(geo: Geometry, state: Array, s: Array) -> tuple[Orbit, Array, Anomaly, Sight, Array]:
+    """The same as :func:`look_alone` for lanes of arrays; both outer lines on the first axis."""
+    orbit = middle_orbit(geo.middle, state[1], state[3], state[4], state[5], geo.gm, np.sqrt)
+    dt = geo.lines[12]
+    if geo.per_c:
+        dt = dt - (state[0:3:2] - state[1]) * geo.per_c
+    at = near_anomaly(s, orbit.r0, orbit.eta, orbit.beta, dt, geo.gm, FINAL)
+    seen = sighted(geo.lines, orbit, at, dt, geo.gm)
+    miss = (seen.east * seen.east + seen.north * seen.north) / (seen.path * seen.path)
+    return orbit, dt, at, seen, miss
+
+
+def _half(part: Any, which: int) -> Any:
+    """One of the two outer lines of a row or of a vector of rows."""
+    if isinstance(part, tuple):
+        return tuple(one[which] for one in part)
+    return part[which] if isinstance(part, np.ndarray) else part
+
+
+def _step_lanes(geo: Geometry, state: Array, orbit: Orbit, dt: Array, at: Anomaly, seen: Sight, far: Array) -> Array:
+    """Newton's limited steps, (6, m)."""
+    both, _ = equations(geo.lines, geo.middle, orbit, at, seen, dt, state[0:3:2], geo.gm, geo.per_c)
+    one, two = (Equations(*(_half(part, k) for part in both)) for k in (0, 1))
+    drho, dx, dy, dz, outer1, outer3 = newton_step(one, two)
+    rho2 = np.abs(state[1])
+    speed = np.sqrt(2.0 * geo.gm / orbit.r0) + np.sqrt(orbit.vx * orbit.vx + orbit.vy * orbit.vy + orbit.vz * orbit.vz)
+    reach = np.where(drho < 0.0, 0.8 * rho2, 4.0 * rho2 + far)
+    size, change = np.abs(drho), np.sqrt(dx * dx + dy * dy + dz * dz)
+    limit = np.where(size > reach, reach / size, 1.0)
+    limit = np.where(change > speed, np.fmin(limit, speed / change), limit)
+    step = np.empty((6, drho.size))
+    step[0], step[1], step[2], step[3], step[4], step[5] = outer1, drho, outer3, dx, dy, dz
+    step *= limit
+    return step
+
+
+class _Front(NamedTuple):
+    """Lanes still searched: their place, geometry, state (6, m), universal variables, next step and its scale."""
+
+    place: Array
+    geo: Geometry
+    state: Array
+    s: Array
+    step: Array
+    merit: Array
+    shrink: Array
+    far: Array
+
+
+class _Found(NamedTuple):
+    """Where the lanes' best orbits are written."""
+
+    range_km: Array
+    v2_km_s: Array
+    miss_rad: Array
+    done: Array
+
+    def write(self, place: Array | slice, state: Array, own: Array, miss: Array) -> None:
+        """Orbits of one look: own ranges and squared misses of the outer lines."""
+        self.range_km[0, place], self.range_km[1, place], self.range_km[2, place] = own[0], state[1], own[1]
+        self.v2_km_s[:, place] = state[3:]
+        self.miss_rad[0, place], self.miss_rad[2, place] = np.sqrt(miss[0]), np.sqrt(miss[1])
+        self.miss_rad[1, place] = 0.0
+
+
+def _refined_lanes(geo: Geometry, state: Array, s: Array, iterations: int) -> Refined:
+    m = state.shape[1]
+    found = _Found(state[:3].copy(), state[3:].copy(), np.full((3, m), np.nan), np.zeros(m, dtype=int))
+    fronts = []
+    # Blocks that stay in the cache; what is left of them after a few steps goes on together.
+    together = min(_TOGETHER, iterations)
+    for begin in range(0, m, _BLOCK):
+        block = slice(begin, min(begin + _BLOCK, m))
+        part = geo._replace(lines=geo.lines[:, :, block], middle=geo.middle[:, block])
+        front = _begun(part, state[:, block], s[:, block], block, found)
+        front = _advanced(front, found, together)
+        if front is not None:
+            fronts.append(front)
+    if fronts:
+        _advanced(_joined_fronts(fronts), found, iterations - together, last=True)
+    return _result(*found)
+
+
+def _joined_fronts(fronts: list[_Front]) -> _Front:
+    if len(fronts) == 1:
+        return fronts[0]
     parts = {
-        name: np.where(mask, part, old_parts[name]) for name, part in new._asdict().items() if name not in ("u", "fg")
+        name: np.concatenate([getattr(one, name) for one in fronts], axis=-1)
+        for name in _Front._fields
+        if name != "geo"
     }
-    return Look(**parts, u=u, fg=fg)  # type: ignore[arg-type]
+    lines = np.concatenate([one.geo.lines for one in fronts], axis=-1)
+    middle = np.concatenate([one.geo.middle for one in fronts], axis=-1)
+    return _Front(geo=fronts[0].geo._replace(lines=lines, middle=middle), **parts)
 
 
-def last_lanes(geo: Geometry, seen: Look, begin: int) -> tuple[Geometry, Look]:
-    """The lanes from ``begin`` on, as views."""
-    lanes = slice(begin, None)
-    return geo.take(lanes), _take(seen, lanes)
+def _begun(geo: Geometry, state: Array, s: Array, block: slice, found: _Found) -> _Front | None:
+    """First look of a block of lanes."""
+    orbit, dt, at, seen, miss = _look_lanes(geo, state, s)
+    found.write(block, state, seen.path / geo.lines[13], miss)
+    merit = miss[0] + miss[1]
+    going = ((merit > MISS_AIM_RAD**2) | _loose(at, s)) & np.isfinite(merit)
+    if not going.any():
+        return None
+    far = 0.1 * np.abs(geo.middle[3:]).max(axis=0)
+    step = _step_lanes(geo, state, orbit, dt, at, seen, far)
+    front = _Front(np.arange(block.start, block.stop), geo, state, at[0], step, merit, np.ones(merit.size), far)
+    return front if going.all() else _kept(front, np.flatnonzero(going))
 
 
-def angle_map(lines: Lines, range_km: Array, geo: Geometry, seen: Look) -> tuple[Array, Array, Array]:
-    """First-order effect of the six angles on the orbit through the lines.
+def _loose(at: Anomaly, s: Array) -> Array:
+    far: Array = np.abs(at[0] - s) > TIGHT * np.abs(at[0])
+    return far[0] | far[1]
 
-    Parameters
-    ----------
-    lines : Lines
-    range_km : ndarray, shape (3, m)
-        Slant ranges of the converged orbit.
-    geo : Geometry
-        Of the lines.
-    seen : Look
-        The converged orbit seen at the outer lines.
 
-    Returns
-    -------
-    d_range : ndarray, shape (6, m)
-        Partials of the middle range (km/rad) by (d alpha cos delta, d delta) of lines 1, 2, 3 in turn.
-    d_r2 : ndarray, shape (6, 3, m)
-        Partials of the middle position at its emission time.
-    d_v2 : ndarray, shape (6, 3, m)
-        Partials of the middle velocity.
-    """
-    with np.errstate(all="ignore"):
-        system = partials(geo, seen)
-        kappa, rows, slope = _eliminated(system)
-        axes = tangent_frame(lines.unit[1])[:2]
-        right = np.zeros((6, 2, 2, range_km.shape[1]))
-        for arc, line in ((0, 0), (1, 2)):
-            for axis in (0, 1):
-                # The frame stays, the line turns; along the frame's third axis nothing changes.
-                right[2 * line + axis, axis, arc] = range_km[line]
-        for axis in (0, 1):
-            # Turning the middle line displaces the middle position.
-            shift = axes[axis] * range_km[1]
-            effect = (
-                system.along_v * dot(seen.v2, shift)
-                + system.along_r * dot(seen.r2, shift)
-                + seen.fg[0] * dot(geo.frame, shift)
+def _kept(front: _Front, keep: Array) -> _Front:
+    geo = front.geo
+    return _Front(
+        front.place[keep],
+        geo._replace(lines=geo.lines.take(keep, -1), middle=geo.middle.take(keep, -1)),
+        front.state.take(keep, -1),
+        front.s.take(keep, -1),
+        front.step.take(keep, -1),
+        front.merit[keep],
+        front.shrink[keep],
+        front.far[keep],
+    )
+
+
+def _advanced(front: _Front | None, found: _Found, trials: int, last: bool = False) -> _Front | None:
+    """Iterate; None once nothing is left to improve."""
+    while front is not None and trials:
+        if last and front.merit.size <= _FEW:
+            _finished_alone(front, found, trials)
+            return None
+        trials -= 1
+        place, geo, state, s, step, merit, shrink, far = front
+        trial = state + shrink * step
+        orbit, dt, at, seen, miss = _look_lanes(geo, trial, s)
+        new = miss[0] + miss[1]
+        better = new < merit
+        own = seen.path / geo.lines[13]
+        if better.all():
+            found.write(place, trial, own, miss)
+            found.done[place] += 1
+            state, merit, shrink = trial, new, np.minimum(1.0, shrink * 3.0)
+            going = (merit > MISS_AIM_RAD**2) | _loose(at, s)
+            s = at[0]
+        else:
+            good = np.flatnonzero(better)
+            found.write(place[good], trial[:, good], own[:, good], miss[:, good])
+            found.done[place[good]] += 1
+            # What no longer improves below the limit has reached its rounding; elsewhere the step is shortened.
+            going = np.where(
+                better,
+                (new > MISS_AIM_RAD**2) | _loose(at, s),
+                (merit >= MISS_LIMIT_RAD**2) & (shrink * 0.25 >= _SMALLEST_STEP),
             )
-            right[2 + axis] = kappa * effect[2] - effect[:2]
-        dv, drho = _solve(rows, slope, right)
-        d_r2 = drho[:, None, :] * lines.effective[1]
-        d_r2[2:4] += axes * range_km[1]
-        return drho, d_r2, dv
+            shrink = np.where(better, np.minimum(1.0, shrink * 3.0), shrink * 0.25)
+            state, s, merit = np.where(better, trial, state), np.where(better, at[0], s), np.where(better, new, merit)
+        count = int(np.count_nonzero(going))
+        if not count:
+            return None
+        if count < going.size and (count < _WORTH_LEAVING * going.size or count <= _FEW):
+            keep = np.flatnonzero(going)
+            front = _kept(_Front(place, geo, state, s, step, merit, shrink, far), keep)
+            place, geo, state, s, step, merit, shrink, far = front
+            orbit, dt = Orbit(*(k.take(keep) for k in orbit)), dt.take(keep, -1)
+            better, going = better[keep], going[keep]
+            at, seen = tuple(k.take(keep, -1) for k in at), Sight(*(k.take(keep, -1) for k in seen))
+        fresh = _step_lanes(geo, state, orbit, dt, at, seen, far) if better.any() else step
+        step = fresh if better.all() else np.where(better, fresh, step)
+        if count < going.size:
+            # Lanes that are done wait for the next repacking: a step of nothing is never better.
+            step = np.where(going, step, 0.0)
+            merit = np.where(going, merit, 0.0)
+        front = _Front(place, geo, state, s, step, merit, shrink, far)
+    return front
+
+
+def _finished_alone(front: _Front, found: _Found, trials: int) -> None:
+    """The last few lanes go on in plain floats, where arrays would cost more than the arithmetic."""
+    state, s, step = front.state.T.tolist(), front.s.T.tolist(), front.step.T.tolist()
+    for k, lane in enumerate(lanes_of(front.geo)):
+        search = _Search(lane, tuple(state[k]), tuple(s[k]))
+        search.merit, search.shrink, search.step = float(front.merit[k]), float(front.shrink[k]), tuple(step[k])
+        search.run(trials)
+        if search.done:
+            place = front.place[k]
+            found.range_km[:, place], found.v2_km_s[:, place] = search.ranges, search.state[3:]
+            found.miss_rad[:, place] = search.miss
+            found.done[place] += search.done

@@ -56,8 +56,8 @@ def possible_revolutions(
     r3 = norm(lines.observer_km[2] + np.exp(last).ravel() * lines.effective[2]).reshape(last.shape)
     far = np.maximum(r1, r3)
     least = np.maximum(0.5 * far, 0.5 * (far + max(body_radius_km - GRAZING_KM, 0.0)))
-    period = 2.0 * np.pi * np.sqrt(float(least.min()) ** 3 / lines.gm_km3_s2)
-    bound = int(min(span / period, 1e6))
+    period = 2.0 * np.pi * np.sqrt(np.float64(least.min()) ** 3 / lines.gm_km3_s2)
+    bound = int(np.nan_to_num(min(span / period, 1e6)))
     if wanted is None:
         return list(range(min(bound, MOST_REVOLUTIONS) + 1))
     return [n for n in wanted if n <= bound]

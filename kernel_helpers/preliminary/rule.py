@@ -21,7 +21,7 @@ from numpy.typing import ArrayLike
 from firstarc.preliminary.gauss import RangePolynomial, gauss_estimate, range_polynomial
 from firstarc.preliminary.gibbs import gibbs_velocity
 from firstarc.preliminary.herrick_gibbs import herrick_gibbs_velocity
-from firstarc.preliminary.lines_of_sight import Array, Lines, angle, norm, tangent_frame
+from firstarc.preliminary.lines_of_sight import Array, Lines, angle
 from firstarc.twobody.kepler import propagate
 
 GIBBS = "Gibbs"
@@ -130,21 +130,19 @@ def turned_lines(lines: Lines, covariance: Array) -> Lines:
     Lanes 0 to 5 carry +1 sigma of (first, second error of line 1), line 2, line 3; lanes 6 to 11 the
     opposite.
     """
-    axes = tangent_frame(lines.unit)[:2, ..., 0]
-    columns = _root_of_covariance(covariance)
-    shift = np.einsum("aic,iak->ikc", axes, columns)
-    turned = np.repeat(lines.unit, 12, axis=-1)
+    axes = lines.frame[:2, ..., 0].transpose(1, 2, 0)
+    # Observation, component, principal error.
+    shift = axes @ _root_of_covariance(covariance)
+    moved = np.zeros((3, 3, 12))
     for line in range(3):
-        for k in range(2):
-            turned[line, :, 2 * line + k] += shift[line, k]
-            turned[line, :, 6 + 2 * line + k] -= shift[line, k]
-    turned /= norm(turned)[:, None]
-    effective = turned + (lines.effective - lines.unit)
+        moved[line, :, 2 * line : 2 * line + 2] = shift[line]
+        moved[line, :, 6 + 2 * line : 8 + 2 * line] = -shift[line]
+    # The length of a direction is of no account: its change is of second order.
     return Lines(
-        turned,
-        effective,
-        np.repeat(lines.observer_km, 12, -1),
-        np.repeat(lines.t_s, 12, -1),
+        lines.unit + moved,
+        lines.effective + moved,
+        lines.observer_km.repeat(12, -1),
+        lines.t_s.repeat(12, -1),
         lines.gm_km3_s2,
         lines.per_c,
     )
@@ -154,7 +152,7 @@ def _followed_root(poly: RangePolynomial, start: Array) -> Array:
     """Newton on the octic from a neighbouring root; lanes scaled by the start."""
     a, b, c = poly.a / start**2, poly.b / start**5, poly.c / start**8
     y = np.ones_like(start)
-    for _ in range(3):
+    for _ in range(2):
         square = y * y
         cube = square * y
         value = ((square + a) * cube + b) * cube + c

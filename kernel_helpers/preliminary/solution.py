@@ -94,7 +94,7 @@ class CoreConverged(CoreStage):
     iterations : int
         Newton iterations.
     start : str
-        Which start led there: "Gibbs", "Herrick-Gibbs", "Gauss" or "averaged loop".
+        Which start led there: "Gibbs", "Gauss", "averaged loop" or "range scan".
     history : tuple of Iteration
         The start first.
     covariance : ndarray, shape (6, 6), or None
@@ -192,8 +192,7 @@ class TripleSolution:
     gm_km3_s2, light_time, body_radius_km
         As given.
     candidates : tuple of CoreCandidate
-        One per positive root, ascending, and any orbit that the range scan adds; see
-        :func:`firstarc.preliminary.ranking.rank`.
+        One per positive root, ascending, and any orbit that the range scan adds.
     lines : Lines
         The three lines as the numeric core holds them.
     """

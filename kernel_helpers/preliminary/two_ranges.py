@@ -16,10 +16,10 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from firstarc.preliminary.lambert import lambert, way_words
-from firstarc.preliminary.lines_of_sight import Array, Lines, norm, tangent_frame
+from firstarc.preliminary.lines_of_sight import Array, Lines, tangent_frame
 from firstarc.preliminary.method_orbit import MethodOrbit
 from firstarc.preliminary.outcome import Outcome
-from firstarc.preliminary.range_pairs import FARTHEST, NEAREST, grid, zeros
+from firstarc.preliminary.range_pairs import FARTHEST, NEAREST, grid, scale_km, zeros
 from firstarc.preliminary.revolutions import possible_revolutions, wanted_revolutions
 from firstarc.preliminary.root_orbits import EXCESS_LIMIT_KM_S
 from firstarc.preliminary.through_lines import Estimates, Problem, finished, prepared
@@ -164,9 +164,13 @@ def solve(
     if problem.outcome != Outcome.CONVERGED:
         return problem.rejected(problem.outcome, problem.sentence)
     with np.errstate(all="ignore"):
+        size = scale_km(problem.used_lines)
+        if not size:
+            return problem.rejected(
+                Outcome.BAD_INPUT, "The observer stands at the centre or beyond all bounds: no scale for the ranges."
+            )
         estimates = _estimates(problem, wanted)
         if estimates is None:
-            size = float(norm(problem.used_lines.observer_km[1])[0])
             return problem.rejected(
                 Outcome.NOT_CONVERGED,
                 f"No pair of outer slant ranges from {NEAREST * size:.3g} to {FARTHEST * size:.3g} km has an orbit "

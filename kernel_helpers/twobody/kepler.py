@@ -23,6 +23,8 @@ Array = NDArray[Any]
 
 #: Passes of Laguerre's iteration; three or four are usual, the bracket guarantees the rest.
 MAX_PASSES = 60
+#: Steps of time below this count as none, s.
+_NO_STEP_S = 1e-200
 _EPS = float(np.finfo(float).eps)
 #: Relative size of a step of s that ends the iteration (third order: its cube is what is left).
 _FINAL = 1e-6
@@ -134,7 +136,7 @@ def _first_guess(
     s: Array, far: Array, r0: Array, eta: Array, beta: Array, dt: Array, gm: Array, low: Array, high: Array
 ) -> Array:
     """Start of the iteration for dt >= 0: the series where it holds, anomalies elsewhere."""
-    root = np.sqrt(np.abs(beta))
+    root, cubic = np.sqrt(np.abs(beta)), np.cbrt(6.0 * dt / gm)
     if far.any():
         cos_part, sin_part = 1.0 - r0 * beta / gm, eta * root / gm
         # Ellipse: Danby's E = M + 0.85 e sign(sin M) (1987, Celest. Mech. 40, 303).
@@ -147,11 +149,14 @@ def _first_guess(
         start = np.arcsinh(sin_part / e)
         mean = sin_part - start + root * np.abs(beta) / gm * dt
         hyperbola = (np.arcsinh(mean / e) - start) / root
+        # Near the parabola e is lost in rounding; this bound is not.
+        growth = np.log1p(2.0 * np.abs(root * beta * dt / gm)) + 2.0 * np.log(2.0 + 2.0 * r0 * np.abs(beta) / gm)
+        hyperbola = np.fmin(hyperbola, growth / root)
         # Nearly parabolic: gm s^3 / 6 dominates.
-        cubic = np.cbrt(6.0 * dt / gm)
         guess = np.where(root * cubic < 0.3, cubic, np.where(beta > 0.0, ellipse, hyperbola))
         s = np.where(far, guess, s)
-    return np.where((s > low) & (s < high), s, np.where(np.isfinite(high), 0.5 * (low + high), low))
+    inside = np.fmin(cubic, np.where(np.isfinite(high), 0.5 * (low + high), np.inf))
+    return np.where((s > low) & (s < high), s, np.where(np.isfinite(inside), inside, low))
 
 
 def solve_universal(
@@ -182,6 +187,8 @@ def solve_universal(
         sign = np.where(dt_s < 0.0, -1.0, 1.0)
         eta = eta_km2_s * sign
         dt = np.abs(dt_s)
+        # A step that underflows on the way is none.
+        dt = np.where(dt < _NO_STEP_S, 0.0, dt)
         gm = np.full(dt.shape, gm_km3_s2) if np.ndim(gm_km3_s2) == 0 else np.asarray(gm_km3_s2)
         if start is not None:
             # Near the solution the bracket is only a guard.
@@ -202,7 +209,7 @@ def solve_universal(
         whole = np.where(closed & (dt >= period), np.floor(dt / period), 0.0)
         many = bool(whole.any())
         if many:
-            dt = np.where(whole > 0.0, dt - whole * period, dt)
+            dt = np.where(whole > 0.0, np.maximum(dt - whole * period, 0.0), dt)
             s, far = _near_guess(r0_km, eta, beta_km2_s2, dt, gm)
         # h^2 = r^2 v^2 - (r.v)^2, q = p / (1 + e).
         p = (r0_km * (2.0 * gm - beta_km2_s2 * r0_km) - eta * eta) / gm
@@ -244,14 +251,17 @@ def _iterate(s: Array, low: Array, high: Array, r0: Array, eta: Array, beta: Arr
         curve = eta * c0 + (gm - beta * r0) * g1
         step = 5.0 * value / (slope + np.sqrt(np.abs(16.0 * slope * slope - 20.0 * value * curve)))
         size = np.abs(step)
+        error, terms = np.abs(value), a + np.abs(b) + np.abs(c) + dt
+        # Far from the solution Laguerre's step can be small without being right.
+        final = (size <= _FINAL * s) & ((error <= 2.0 * size * slope) | (error <= 1e-12 * terms))
         # Written so that NaN counts as done.
-        going = (np.abs(value) > 4.0 * _EPS * (a + np.abs(b) + np.abs(c) + dt)) & (size > _FINAL * s)
+        going = (error > 4.0 * _EPS * terms) & ~final
         count = int(np.count_nonzero(going))
         leaving = not count or (count * 2 < going.size and going.size > 16)
         now = (s, c0, g1, g2, g3, slope)
         if leaving:
             # The last step is taken by Taylor's series: with it below _FINAL its cube is beyond a float.
-            h = np.where(size <= _FINAL * s, -step, 0.0)
+            h = np.where(final, -step, 0.0)
             half = 0.5 * h * h
             turn = beta * g1
             now = (
@@ -285,6 +295,13 @@ def _iterate(s: Array, low: Array, high: Array, r0: Array, eta: Array, beta: Arr
                 values[keep] for values in (s_next, low, high, r0, eta, beta, dt, gm)
             )
         s = s_next
+    else:
+        # No solution found: no number rather than a wrong one.
+        rest = np.flatnonzero(going)
+        if lanes is not None:
+            rest = lanes if leaving else lanes[rest]
+        for values in out or ():
+            values[rest] = np.nan
     assert out is not None
     return Universal(*(values.reshape(shape) for values in out))
 

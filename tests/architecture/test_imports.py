@@ -53,7 +53,7 @@ MAY_USE: dict[str, set[str]] = {
     "dynamics": BASE | {"twobody"},
     "observing": BASE | {"border", "formats", "report", "twobody"},
     "preliminary": BASE | {"callable_package", "twobody", "dynamics", "uncertainty"},
-    "fit": BASE | {"twobody", "preliminary", "dynamics", "uncertainty"},
+    "fit": BASE | {"callable_package", "twobody", "preliminary", "dynamics", "uncertainty"},
     "uncertainty": BASE | {"twobody", "dynamics"},
     # what the analyst gets back: the core's plain results with epochs, frames and words
     "determination": BASE | CORE | {"border", "observing", "report"},

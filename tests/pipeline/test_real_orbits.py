@@ -41,7 +41,7 @@ def test_1990ha_preliminary_orbit_of_the_circular() -> None:
 def test_2020mk4_against_the_catalogue_orbit() -> None:
     """Elements of JPL, made from years of observations; nine days can only agree within their own sigmas."""
     published = case("real-2020mk4")["published_orbit"]
-    best = fa.preliminary(loaded("real-2020mk4")).best
+    best = fa.preliminary(loaded("real-2020mk4"), pick=(0, 4, 8)).best
     elements, sigmas = best.elements, best.sigmas
     assert abs(elements.a_au - published["a_au"]) < sigmas.a_km / AU_KM
     assert abs(elements.e - published["e"]) < 0.02

@@ -15,7 +15,6 @@ from firstarc.preliminary.batch import solve_triples
 from firstarc.preliminary.candidates import solve_triple
 from firstarc.preliminary.gauss import positive_roots
 from firstarc.preliminary.outcome import Outcome
-from firstarc.preliminary.ranking import rank
 from firstarc.results import Code
 from firstarc.twobody.kepler import propagate
 from properties.orbit_cases import EARTH, REGIMES, triples
@@ -44,17 +43,10 @@ def found(case, result):
     return out
 
 
-@pytest.mark.parametrize("regime", [r for r in REGIMES if r != "sun hyperbola"])
+@pytest.mark.parametrize("regime", REGIMES)
 def test_truth_is_among_the_candidates(regime):
-    # design goal: 99 % of solvable cases, arcs of 1 to 40 deg
+    # design goal: 99 % of solvable cases, arcs of 1 to 40 deg; this seed served to choose no number of the solver
     case = triples(regime, 1500, seed=21)
-    assert found(case, solved(case)).mean() >= 0.99
-
-
-def test_truth_is_among_the_candidates_for_interstellar_passages():
-    # Strong hyperbolas (e 1.1 to 2) past the Earth: long arcs leave Gauss's series without a root near the
-    # truth. Only arcs to 20 deg are asked for here; over 1 to 40 deg the share is just below 0.99.
-    case = triples("sun hyperbola", 1500, seed=21, arc_deg=(1.0, 20.0))
     assert found(case, solved(case)).mean() >= 0.99
 
 
@@ -257,29 +249,6 @@ def test_rule_follows_the_predicted_error_and_states_the_textbook_beside():
         unknown = solve_triple(case.los[k], case.observer_km[k], case.t_s[k], case.gm)
         assert "noise is not known" in unknown.candidates[0].gibbs.choice.reason
         assert unknown.candidates[0].converged.covariance is None
-
-
-def test_ranking_puts_the_true_orbit_first():
-    """Three roots, five more observations: the residuals decide."""
-    case = triples("main belt", 400, seed=31, arc_deg=(4.0, 12.0))
-    result = solved(case)
-    several = [k for k in range(400) if result.admissible[result.triple == k].sum() > 1]
-    assert len(several) >= 3
-    for k in several[:5]:
-        moving = case.center_velocity_km_s[k]
-        one = solve_triple(
-            case.los[k], case.observer_km[k], case.t_s[k], case.gm, center_velocity_km_s=moving, light_time=True
-        )
-        # More sightings by an observer on a straight line through the three known places.
-        t = np.linspace(case.t_s[k, 0], case.t_s[k, 2], 5)
-        observer = np.stack([np.interp(t, case.t_s[k], case.observer_km[k, :, j]) for j in range(3)], axis=1)
-        emission = -case.range2_km[k] / 299792.458
-        truth = np.concatenate((case.r2_km[k], case.v2_km_s[k]))
-        los, _, _ = predicted_directions(truth, emission, t, observer, moving[:1].repeat(5, 0), case.gm, True)
-        ranking = rank(one, los, observer, t, center_velocity_km_s=moving[:1].repeat(5, 0))
-        best = one.candidates[ranking.order[0]]
-        assert abs(best.converged.range_km[1] / case.range2_km[k] - 1.0) < 1e-6
-        assert len(ranking.order) == len(one.candidates) == len(ranking.reasons)
 
 
 def corrupted(count):

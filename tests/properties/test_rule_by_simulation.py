@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from firstarc.preliminary.candidates import solve_triple
 from firstarc.preliminary.gauss import gauss_estimate, positive_roots, range_polynomial
 from firstarc.preliminary.gibbs import gibbs_velocity
 from firstarc.preliminary.herrick_gibbs import herrick_gibbs_velocity
@@ -76,6 +77,54 @@ def test_noise_of_angles_goes_through_gauss_to_the_velocity():
             scatter = np.sqrt(np.sum(np.var(v, axis=1)))
             # 2000 draws of up to six numbers: about 4 % of sampling noise
             assert expected[0] == pytest.approx(scatter, rel=0.12)
+
+
+@pytest.mark.parametrize("sigma", [1e-6, 1e-5, 1e-4])
+def test_angles_only_choice_is_right_away_from_the_crossover(sigma):
+    """The rule chosen for angles against noisy draws of the six angles, wherever the errors differ by over 1.5."""
+    rng = np.random.default_rng(44)
+    right = decided = 0
+    used = set()
+    for regime, arc in (
+        ("leo", (1.0, 40.0)),
+        ("meo", (2.0, 40.0)),
+        ("molniya", (2.0, 40.0)),
+        ("main belt", (3.0, 30.0)),
+    ):
+        case = triples(regime, 25, seed=45, light_time=False, arc_deg=arc)
+        for k in range(25):
+            one = solve_triple(case.los[k], case.observer_km[k], case.t_s[k], case.gm, sigma_rad=np.full((3, 2), sigma))
+            near = [
+                c
+                for c in one.candidates
+                if c.admissible and abs(c.converged.range_km[1] / case.range2_km[k] - 1.0) < 1e-3
+            ]
+            if not near or near[0].converged.start == "range scan":
+                # No root leads to the truth: there is no Gauss estimate of it to correct.
+                continue
+            choice, root = near[0].gibbs.choice, near[0].root_km
+            los = case.los[k] + sigma * rng.normal(size=(DRAWS, 3, 3))
+            seen, times = np.repeat(case.observer_km[k : k + 1], DRAWS, 0), np.repeat(case.t_s[k : k + 1], DRAWS, 0)
+            noisy, _, _ = time_ordered(los, seen, times, None, case.gm, False)
+            poly = range_polynomial(noisy)
+            roots = positive_roots(poly.a, poly.b, poly.c)[0]
+            followed = np.take_along_axis(roots, np.nanargmin(np.abs(roots - root), axis=1)[:, None], 1)[:, 0]
+            gauss = gauss_estimate(noisy, poly, followed)
+            errors = []
+            for v in (
+                gibbs_velocity(gauss.r_km, case.gm),
+                herrick_gibbs_velocity(gauss.r_km, noisy.t_s, case.gm),
+            ):
+                off = np.sum((v - case.v2_km_s[k][:, None]) ** 2, axis=0)
+                errors.append(float(np.sqrt(np.mean(np.where(np.isfinite(off), off, np.inf)))))
+            if max(errors) > 1.5 * min(errors):
+                decided += 1
+                rule = "Gibbs" if errors[0] < errors[1] else "Herrick-Gibbs"
+                used.add(rule)
+                right += choice.rule == rule
+    assert decided >= 20
+    assert right >= 0.95 * decided, (right, decided)
+    assert used == {"Gibbs", "Herrick-Gibbs"} or sigma != 1e-5
 
 
 def test_textbook_angles():
