@@ -93,7 +93,7 @@ class Builder:
             final = Status(Code.CONVERGED, f"{name}{', ' + orbit.assumption if orbit.assumption else ''}.")
         else:
             final = Status(Code.CONVERGED, orbit.status.sentence)
-        reason = orbit.remark if orbit.admissible else orbit.status.sentence
+        reason = orbit.remark if orbit.admissible else self._method_reason(orbit, picked)
         assumed = f"assumed {orbit.assumption}" if orbit.assumption else ""
         return self._candidate(
             method=method,
@@ -199,15 +199,28 @@ class Builder:
             sigma_arcsec=lines.sigma_rad / ARCSEC_RAD,
         )
 
+    def _method_reason(self, orbit: MethodOrbit, picked: tuple[int, ...]) -> str:
+        """Why a solution is rejected, in the units and row numbers of the analyst."""
+        if orbit.outcome is Outcome.NEGATIVE_RANGE and np.isfinite(orbit.range_km).any():
+            return self._negative(orbit.range_km, picked, int(np.nanargmin(orbit.range_km)))
+        if orbit.outcome is Outcome.BELOW_SURFACE and np.isfinite(orbit.positions_km).all():
+            lowest = float(np.linalg.norm(orbit.positions_km, axis=1).min())
+            depth = BODY_RADIUS_KM[self.obs.center] - lowest
+            if depth > 0.0:
+                return f"{length_text(depth, self.obs.center)} below the surface when observed"
+        return orbit.status.sentence
+
+    def _negative(self, ranges: Array, picked: Sequence[int], worst: int) -> str:
+        row = int(self.obs.rows[picked[worst]]) + 1
+        return f"slant range negative ({length_text(float(ranges[worst]), self.obs.center)} at row {row})"
+
     def _gauss_reason(self, core: CoreCandidate) -> str:
         """Why a root is rejected, or what is doubtful about it, in the units and row numbers of the analyst."""
         obs = self.obs
         if core.outcome is Outcome.NEGATIVE_RANGE:
             late = bool(core.gauss.range_km[1] > 0.0)
             ranges = core.converged.range_km if late else core.gauss.range_km
-            worst = int(np.argmin(ranges)) if late else 1
-            row = int(obs.rows[self.pick[worst]]) + 1
-            return f"slant range negative ({length_text(float(ranges[worst]), obs.center)} at row {row})"
+            return self._negative(ranges, self.pick, int(np.argmin(ranges)) if late else 1)
         if core.outcome is Outcome.BELOW_SURFACE:
             radius = BODY_RADIUS_KM[obs.center]
             lowest = float(np.linalg.norm(core.converged.positions_km, axis=1).min())

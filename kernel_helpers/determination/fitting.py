@@ -23,7 +23,7 @@ from ..fit.motion import Motion, TwoBody
 from ..fit.orbit_fit import fit_orbit
 from ..fit.parameters import ClockOffset, ForceParameter, Parameter, StationOffset
 from ..fit.rejection import RejectionRule, manual_choice
-from ..fit.verdicts import verdicts
+from ..fit.verdicts import WEAKEST_PART, verdicts, weakest_part
 from ..fit.weighting import same_night_factors
 from ..observing.observations import Observations
 from .orbit_fit import Estimate, OrbitFit
@@ -33,6 +33,8 @@ Array = NDArray[np.float64]
 FORCES = ("two-body", "full")
 #: Sightings within so many sigmas (and as many arcsec for the ephemeris) of a planet's place are of that planet.
 SEEN_SIGMAS = 5.0
+#: How the reason begins where forces are left out because no single orbit is fixed.
+_OPEN = "The arc fixes no single orbit"
 
 
 @dataclass(frozen=True)
@@ -205,6 +207,12 @@ def make_fit(
     cheap = None
     if not model.two_body and not force_names:
         cheap = MeasurementModel(measured, TwoBody(gm), float(times[0]), parameters)
+        if forces.asked is None and not forces.wants_radiation:
+            trial = fit_orbit(cheap, plain, times, manual_choice(len(obs), keep, leave_out))
+            part = weakest_part(trial)
+            # about the Sun a near object's state is dominated by the observer's own: three looks tell nothing more
+            if part > WEAKEST_PART or (obs.center == "sun" and trial.dof < 1):
+                model, real, cheap = replace(two_body(obs.center), reason=_open(part)), cheap, None
     found = fit_orbit(
         real,
         plain,
@@ -214,6 +222,18 @@ def make_fit(
         approach=cheap,
     )
     return result_of(obs, found, real, model, epoch, names, start_words, forces, tuple(estimate))
+
+
+def _open(part: float) -> str:
+    if part <= WEAKEST_PART:
+        why = "as many unknowns as observed numbers"
+    elif np.isfinite(part):
+        why = f"along the weakest direction the state is known to {part:.2g} of distance and speed only"
+    else:
+        why = "at least one direction of the state is not known at all"
+    return (
+        f"{_OPEN} ({why}), and what perturbs it depends on which orbit is meant: nothing but two-body motion is put in."
+    )
 
 
 def result_of(
@@ -281,7 +301,9 @@ def prediction_model(fit: OrbitFit, obs: Observations) -> tuple[MeasurementModel
     lines, records = obs.sight_lines, obs.records
     shift = _seconds(fit.observations.sight_lines.epoch_tdb, lines.epoch_tdb)
     t_state_s = solution.t_state_s + shift
-    model = fit.asked_forces.model(obs, solution.state, t_state_s)
+    doubtful = fit.asked_forces.asked is None and fit.forces_reason.startswith(_OPEN)
+    model = two_body(obs.center) if doubtful else fit.asked_forces.model(obs, solution.state, t_state_s)
+    # offsets go by the station's code: its number may differ from one set of observations to the other
     seeing = {records.sites[index].code for index in np.unique(records.site_index)}
     kept, columns, first = [], list(range(6)), 6
     for asked in fit.asked_estimates:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from typing import Any
 
@@ -14,11 +14,11 @@ from ..constants import ARCSEC_RAD, EARTH_RADIUS_KM, SUN_RADIUS_KM
 from ..errors import UsageError
 from ..fit.fitted import LeastSquares
 from ..fit.predicted_residuals import predicted_residuals
-from ..fit.verdicts import Verdicts
+from ..fit.verdicts import RIVAL_CHI2, Verdicts
 from ..observing.observations import Observations
 from ..preliminary.ranging import sample
 from ..report.rounding import fixed, scientific, sigma_decimals, significant, with_sigma
-from ..results import Result, Status
+from ..results import Code, Result, Status
 from ..uncertainty.covariance import ElementSigmas, element_sigmas
 from .elements import Elements, reference_axes
 from .preliminary import sample_lines
@@ -116,13 +116,14 @@ class OrbitFit(Result):
     def sample(self) -> Any:
         """Weighted orbits over the admissible region where no single orbit is determined, else None.
 
-        Two-body orbits from ranging (:mod:`firstarc.preliminary.ranging`) over the used observations.
+        Two-body orbits from ranging (:mod:`firstarc.preliminary.ranging`) over the used observations; its ``status``
+        says when they do not represent the observations.
         """
         if self.determined:
             return None
         lines = self.observations.sight_lines
         inside = np.flatnonzero(self.used)
-        return sample(
+        found = sample(
             lines.los[inside],
             lines.observer_km[inside],
             lines.t_s[inside],
@@ -132,6 +133,15 @@ class OrbitFit(Result):
             sigma_rad=self.sigma_arcsec[inside] * ARCSEC_RAD,
             body_radius_km=EARTH_RADIUS_KM if self.center == "earth" else SUN_RADIUS_KM,
         )
+        least = float(np.min(found.chi2, initial=np.inf, where=np.isfinite(found.chi2)))
+        if not found.status.ok or least <= self.chi2 + RIVAL_CHI2:
+            return found
+        # The raster passed by what the iteration found: its weights say nothing about these observations.
+        words = (
+            f"The sample misses the observations: its least chi-square is {chi2_text(least)}, that of the fit "
+            f"{chi2_text(self.chi2)}. It must not be used."
+        )
+        return replace(found, status=Status(Code.NOT_CONVERGED, words))
 
     @property
     def epoch(self) -> Any:
@@ -246,7 +256,8 @@ class OrbitFit(Result):
     def element_table(self) -> list[list[str]]:
         """Elements with their sigmas; values alone where no single orbit is determined."""
         sigma = sigma_rows(self.elements, self.sigmas) if self.determined else {}
-        table = [["element", "value", "sigma", "unit"]]
+        # without a single orbit the numbers are those of one that fits, and are not to be read as the answer
+        table = [["element", "value" if self.determined else "one of many", "sigma", "unit"]]
         for name, (value, unit) in element_rows(self.elements).items():
             if not math.isfinite(value):
                 continue

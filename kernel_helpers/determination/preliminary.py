@@ -127,7 +127,7 @@ class Preliminary(Result):
 
 def sample_lines(sample: Any, center: str) -> list[Any]:
     """What a weighted sample of orbits says: 5, 50 and 95 per cent of it, no orbit to use."""
-    if not np.isfinite(sample.best.state).all():
+    if not sample.status.ok or not np.isfinite(sample.best.state).all():
         return [str(sample.status)]
     summary = sample.summary(reference_axes(center))
     unit, scale = ("km", 1.0) if center == "earth" else ("au", AU_KM)
