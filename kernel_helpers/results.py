@@ -85,7 +85,10 @@ class Shown:
 
 
 def same(left: Any, right: Any) -> bool:
-    """Equality of two field values; arrays are equal when shape and every number agree (NaN equals NaN)."""
+    """Equality of two field values; arrays are equal when shape and every number agree (NaN equals NaN).
+
+    Plain dataclasses are compared field by field, so that NaN equals NaN inside them too.
+    """
     if isinstance(left, np.ndarray) or isinstance(right, np.ndarray):
         a, b = np.asarray(left), np.asarray(right)
         return a.shape == b.shape and bool(np.array_equal(a, b, equal_nan=a.dtype.kind == b.dtype.kind == "f"))
@@ -93,6 +96,9 @@ def same(left: Any, right: Any) -> bool:
         return len(left) == len(right) and all(same(a, b) for a, b in zip(left, right, strict=True))
     if isinstance(left, float) and isinstance(right, float):
         return left == right or (left != left and right != right)
+    made = getattr(type(left), "__dataclass_params__", None)
+    if made is not None and made.eq and type(left) is type(right):
+        return all(same(getattr(left, f.name), getattr(right, f.name)) for f in fields(left) if f.compare)
     return bool(left == right)
 
 

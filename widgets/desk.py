@@ -5,6 +5,7 @@ from __future__ import annotations
 import traceback
 from collections.abc import Sequence
 from dataclasses import replace
+from html import escape
 from typing import Any
 
 import numpy as np
@@ -165,7 +166,9 @@ class Desk(Scene):
     def _solve(self) -> None:
         settings = self._in_force
         excluded = tuple(row for row in settings.excluded if row not in settings.pick)
-        settings = self._in_force = replace(settings, excluded=excluded)
+        # a row that Python takes out is no longer kept: the later choice by hand wins
+        kept = tuple(row for row in settings.kept if row not in excluded)
+        settings = self._in_force = replace(settings, excluded=excluded, kept=kept)
         try:
             self._snapshot = self._solver.snapshot(settings)
             scene, frame = self._painter.paint(self._snapshot, settings, self._code(settings))
@@ -213,8 +216,24 @@ class Desk(Scene):
         data, metadata = bundle if isinstance(bundle, tuple) else (bundle, {})
         if data is None:
             return bundle
-        data = {**data, "text/html": static_html(self.scene, self.frame), "text/plain": static_text(self.scene)}
-        return data, metadata
+        return {**data, "text/html": self._kept_html(), "text/plain": self._kept_text()}, metadata
+
+    def _kept_html(self) -> str:
+        try:
+            return static_html(self.scene, self.frame)
+        except Exception as error:  # the widget itself must show whatever becomes of its kept picture
+            return f"<p>{escape(no_picture(error))}</p><pre>{escape(self._kept_text())}</pre>"
+
+    def _kept_text(self) -> str:
+        try:
+            return static_text(self.scene)
+        except Exception as error:
+            return no_picture(error)
+
+
+def no_picture(error: Exception) -> str:
+    """Why the cell keeps no picture of the Desk."""
+    return f"The Desk's kept picture could not be made: {type(error).__name__}: {error}"
 
 
 def checked_pick(value: Any, count: int) -> tuple[int, int, int]:

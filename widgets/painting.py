@@ -81,7 +81,8 @@ class Painter:
         chosen = snap.chosen
         if chosen is None:
             return None
-        steps = [("Gauss estimate", worst_miss(chosen.gauss)), (f"{chosen.gibbs.rule}", worst_miss(chosen.gibbs))]
+        # methods other than Gauss' have an estimate of their own name and no correction: a miss of NaN is not drawn
+        steps = [(chosen.gauss.name, worst_miss(chosen.gauss)), (chosen.gibbs.rule, worst_miss(chosen.gibbs))]
         steps += [(f"step {k}", one.miss_arcsec) for k, one in enumerate(chosen.history[1:], start=1)]
         sigma = float(np.median(snap.sigma_arcsec[list(snap.pick)]))
         return convergence(steps, sigma, frame=frame)

@@ -61,22 +61,24 @@ def checked(raw: Mapping[str, Any], before: Settings, count: int, stations: tupl
     """Settings from the browser; each unusable value is replaced by the one of ``before``."""
     pick = rows_of(raw.get("pick"), count)
     excluded = rows_of(raw.get("excluded"), count)
+    out = before.excluded if excluded is None else tuple(sorted(set(excluded)))
     kept = rows_of(raw.get("kept"), count)
     estimates = ["", *(f"{kind}:{code}" for kind in ("clock", "station") for code in stations)]
     station = raw.get("station")
     row = rows_of([raw.get("row")], count)
     candidate = raw.get("candidate", before.candidate)
+    method = raw.get("method")
     return Settings(
         pick=before.pick if pick is None or len(pick) != 3 or len(set(pick)) != 3 else (pick[0], pick[1], pick[2]),
         station=station if station in stations else before.station,
         row=before.row if row is None else row[0],
-        excluded=before.excluded if excluded is None else tuple(sorted(set(excluded))),
-        kept=before.kept if kept is None else tuple(sorted(set(kept) - set(excluded or ()))),
+        excluded=out,
+        kept=tuple(sorted(set(before.kept if kept is None else kept) - set(out))),
         estimate=raw["estimate"] if raw.get("estimate") in estimates else before.estimate,
         offsets=before.offsets if "offsets" not in raw else offsets_of(raw["offsets"], stations),
         row_clock=before.row_clock if "row_clock" not in raw else row_clock_of(raw["row_clock"], count),
         candidate=candidate if candidate is None or isinstance(candidate, str) else before.candidate,
-        method=raw["method"] if raw.get("method") in METHODS else before.method,
+        method=method if isinstance(method, str) and method in METHODS else before.method,
         held=raw.get("held") is True,
         widths=widths_of(raw.get("widths"), before.widths),
         seq=raw["seq"] if isinstance(raw.get("seq"), int) else before.seq,

@@ -78,10 +78,11 @@ class Solver:
         residuals, chi = residual_arrays(chosen, moved)
         if found is not None:
             residuals, chi = found.residuals_arcsec, found.chi
-        base = recorded if recorded_fit is None else recorded_fit
+        # compared is what is of the same kind: fit with fit, candidate with candidate
+        base: Any = recorded if found is None else recorded_fit
         if base is not self._residuals[0]:
-            of_base = residual_arrays(recorded, self.obs)[0] if recorded_fit is None else recorded_fit.residuals_arcsec
-            self._residuals = (base, of_base)
+            of_fit = isinstance(base, OrbitFit)
+            self._residuals = (base, base.residuals_arcsec if of_fit else residual_arrays(base, self.obs)[0])
         estimated, words = self._estimate(settings, recorded)
         return Snapshot(
             obs=moved,
@@ -143,7 +144,10 @@ class Solver:
         """Offsets of a station from the recorded observations, where the hand asked for them."""
         if not settings.estimate or settings.held or recorded is None:
             return (), ""
-        key = (settings.estimate, settings.excluded, settings.kept, settings.pick, settings.candidate)
+        key = (
+            *(settings.estimate, settings.excluded, settings.kept),
+            *(settings.pick, settings.method, settings.candidate),
+        )
         if self._estimates[0] != key:
             try:
                 found = fit(self.obs, start=recorded, estimate=(settings.estimate,), **choices(settings))

@@ -221,7 +221,30 @@ def make_fit(
         RejectionRule() if reject else None,
         approach=cheap,
     )
-    return result_of(obs, found, real, model, epoch, names, start_words, forces, tuple(estimate))
+    judge = cheap if cheap is not None and _same_partials(found, cheap) else real
+    return result_of(obs, found, judge, model, epoch, names, start_words, forces, tuple(estimate))
+
+
+#: Two-body motion stands in for the real one when the fit's linearity is tested, if its partials agree this well.
+SAME_PARTIALS = 0.01
+
+
+def _same_partials(found: LeastSquares, cheap: MeasurementModel) -> bool:
+    """True when a cheaper motion bends the residuals as the fitted one does.
+
+    Judged by its partials along the principal axes of the covariance; integrating a dozen displaced orbits would cost
+    more than the fit.
+    """
+    if found.covariance is None or not found.used.any():
+        return False
+    looked = cheap.evaluate(found.x)
+    design = (cheap.whitening(looked.per_second) @ looked.by_x)[found.used].reshape(-1, found.x.size)
+    fitted = found.design[found.used].reshape(-1, found.x.size)
+    size = np.sqrt(np.diag(found.covariance))
+    values, vectors = np.linalg.eigh(found.covariance / np.outer(size, size))
+    axes = size[:, None] * vectors * np.sqrt(np.maximum(values, 0.0))
+    away, reach = np.linalg.norm((design - fitted) @ axes, axis=0), np.linalg.norm(fitted @ axes, axis=0)
+    return bool((away <= SAME_PARTIALS * reach).all())
 
 
 def _open(part: float) -> str:
@@ -239,7 +262,7 @@ def _open(part: float) -> str:
 def result_of(
     obs: Observations,
     found: LeastSquares,
-    real: MeasurementModel,
+    judge: MeasurementModel,
     model: ForceModel,
     epoch: tuple[float, float],
     names: Sequence[tuple[str, str, float]],
@@ -247,8 +270,8 @@ def result_of(
     forces: Forces,
     estimate: tuple[str, ...],
 ) -> OrbitFit:
-    """The core's fit with units, names and verdicts."""
-    judged = verdicts(found, real)
+    """The core's fit with units, names and verdicts; ``judge`` computes the orbits of the linearity test."""
+    judged = verdicts(found, judge)
     count = 6 + len(found.parameters)
     covariance = np.full((count, count), np.nan) if found.covariance is None else found.covariance
     sigmas = np.sqrt(np.diag(covariance)[6:])

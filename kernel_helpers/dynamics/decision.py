@@ -83,6 +83,7 @@ def decide(
     source: str = "",
     radiation: RadiationPressure | None = None,
     drag: Drag | None = None,
+    itself: str = "",
 ) -> ForceModel:
     """Forces that an arc needs, with the reason.
 
@@ -107,7 +108,7 @@ def decide(
     tracks : mapping of str to callable, optional
         Bodies from the centre, as for :func:`firstarc.dynamics.force_models.full`. Without them no third body can
         be considered, and the reason says so.
-    pole, source
+    pole, source, itself
         As for :func:`firstarc.dynamics.force_models.full`.
     radiation, drag
         Kept when given.
@@ -130,7 +131,7 @@ def decide(
     if not (np.isfinite(sigma_rad) and sigma_rad > 0.0):
         raise UsageError(f"sigma_rad={sigma_rad!r}; expected a positive number of radians")
     begin, end = float(min(span_s)), float(max(span_s))
-    model = _everything(center, tracks, pole, source, radiation, drag)
+    model = _everything(center, tracks, pole, source, radiation, drag, itself)
     t = np.linspace(begin, end, _SAMPLES)
     r, v = propagate(y[:3], y[3:], t - t_state_s, model.gm_km3_s2)
     radius = np.sqrt(np.sum(r * r, axis=1))
@@ -165,9 +166,10 @@ def _everything(
     source: str,
     radiation: RadiationPressure | None,
     drag: Drag | None,
+    itself: str,
 ) -> ForceModel:
     if tracks is not None:
-        return full(center, tracks, pole, source, radiation, drag)
+        return full(center, tracks, pole, source, radiation, drag, itself)
     if center == "earth":
         return replace(two_body(center), zonals=EARTH_ZONALS, radiation=radiation, drag=drag, pole=pole)
     return replace(two_body(center), relativity=True, radiation=radiation, drag=drag, pole=pole)

@@ -245,6 +245,7 @@ def full(
     source: str = "",
     radiation: RadiationPressure | None = None,
     drag: Drag | None = None,
+    itself: str = "",
 ) -> ForceModel:
     """Everything that is modelled about a centre.
 
@@ -261,6 +262,8 @@ def full(
         As in :class:`ForceModel`.
     source : str
         The ephemeris behind the tracks.
+    itself : str
+        The body whose own orbit it is, when it is one of these: nothing attracts itself.
 
     Raises
     ------
@@ -273,7 +276,7 @@ def full(
     missing = [name for name in names if name not in tracks]
     if missing:
         raise UsageError(f"tracks lack {', '.join(missing)}; about the {center} expected {', '.join(names)}")
-    bodies = tuple(Body(name, tracks[name], GM_BODIES_KM3_S2[name], source) for name in names)
+    bodies = tuple(Body(name, tracks[name], GM_BODIES_KM3_S2[name], source) for name in names if name != itself)
     return ForceModel(
         center,
         CENTERS[center],

@@ -14,13 +14,13 @@ alone would call circular orbits impossible; divided by e the density is about u
 keeps it finite. With these numbers simulated satellites, main-belt and near-Earth objects lie inside their stated
 95 % ranges of slant range in 97 to 99 % of arcs: the ranges are rather wide than narrow.
 
-Where the observations fix more than the raster resolves, the weights fill a narrow, bent valley. They are then
-flattened, exp(-chi2 / 2T), until enough nodes carry them; the next raster covers these nodes, its range rates
-counted from a cubic in log rho through them, and so on until T = 1.
+Where the observations fix more than a raster resolves, the weights fill a narrow, bent valley. For each range the
+window of range rates that carries its weight is found first (:mod:`firstarc.preliminary.valley`); then the ranges that
+carry weight, until enough of them do. The final raster follows these windows.
 
 References: statistical ranging: Virtanen, Muinonen and Bowell 2001, Icarus 154, 412; fits at fixed rho and x (the
 manifold of variations): Milani and Gronchi 2010, *Theory of Orbit Determination*, chapter 8 (recalled). The prior
-and the shrinking raster are ours.
+and the search for the valley are ours.
 """
 
 from __future__ import annotations
@@ -38,6 +38,7 @@ from firstarc.preliminary.admissible_region import (
     Raster,
     RegionLimits,
     excluded,
+    range_rate_bounds,
     raster,
     usual_limits,
 )
@@ -46,15 +47,16 @@ from firstarc.preliminary.line_set import LineSet, line_set, misses, problem_sen
 from firstarc.preliminary.lines_of_sight import Array
 from firstarc.preliminary.method_orbit import MethodOrbit
 from firstarc.preliminary.outcome import Outcome
+from firstarc.preliminary.valley import Valley, valley
 from firstarc.results import Code, Status
 from firstarc.twobody.elements import elements_from_state
 from firstarc.twobody.kepler import lagrange, propagate, solve_universal
 
 METHOD = "ranging"
-#: Raster while the region shrinks, effective nodes wanted there, and at the end.
-COARSE, WANTED_COARSE, WANTED_FINAL = (30, 24), 20.0, 40.0
-#: Half width of a raster in sigmas of the flattened weights; degree of the valley's curve; most rasters tried.
-WIDTH, DEGREE, LEVELS = 5.0, 3, 20
+#: Ranges and range rates tried while the region shrinks, effective ranges wanted, and how often it shrinks at most.
+ROWS, COLUMNS, WANTED_ROWS, LEVELS = 40, 8, 8.0, 8
+#: Part of the weight that no longer counts; windows between known ranges are opened by this factor.
+LITTLE, WIDER = 1e-6, 4.0
 #: Nodes with more chi-square than this above the least carry no weight and are not fitted again.
 HOPELESS = 60.0
 #: Passes of each node's fit at most, and the gain in chi-square below which it is at its end.
@@ -158,9 +160,9 @@ class _Nodes(NamedTuple):
     log_det: Array
     out: Excluded
 
-    def log_weight(self, flat: float = 1.0) -> Array:
-        """Logarithm of the weights, without a constant, the chi-square divided by ``flat``."""
-        value = -0.5 * self.chi2 / flat - 0.5 * self.log_det + np.log(self.measure)
+    def log_weight(self) -> Array:
+        """Logarithm of the weights, without a constant."""
+        value = -0.5 * self.chi2 - 0.5 * self.log_det + np.log(self.measure)
         return np.where(np.isfinite(value), value, -np.inf)
 
 
@@ -287,29 +289,63 @@ class _Fitter:
 
     def search(self, shape: tuple[int, int]) -> tuple[_Nodes, int] | None:
         """Nodes of the final raster, and how many rasters it took."""
-        whole = raster(self.one, self.gm, self.limits, COARSE)
-        nodes = None if whole is None else self.fitted(whole)
-        if nodes is None or not np.isfinite(nodes.log_weight()).any():
-            # A thin region can slip through the coarse raster.
-            whole = raster(self.one, self.gm, self.limits, (4 * shape[0], shape[1]))
-            nodes = None if whole is None else self.fitted(whole)
-            if nodes is None or not np.isfinite(nodes.log_weight()).any():
-                return None
-        if _effective(nodes.log_weight()) >= WANTED_FINAL:
-            final = raster(self.one, self.gm, self.limits, shape)
-            assert final is not None
-            return self.fitted(final), 1
-        for level in range(2, LEVELS + 1):
-            resolved = _effective(nodes.log_weight()) >= WANTED_FINAL
-            last = resolved or level == LEVELS
-            flat = 1.0 if resolved else _flattening(nodes)
-            new = self.fitted(_along_valley(nodes, flat, shape if last else COARSE))
-            if not np.isfinite(new.log_weight()).any():
-                return nodes, level
-            nodes = new
-            if last:
+        whole = raster(self.one, self.gm, self.limits, (4 * ROWS, COLUMNS))
+        if whole is None:
+            return None
+        first, last = float(np.log(whole.range_km.min())), float(np.log(whole.range_km.max()))
+        levels = 0
+        for _ in range(LEVELS):
+            step = (last - first) / ROWS
+            z = first + step * (np.arange(ROWS) + 0.5)
+            found = self._valley(z, None)
+            levels += found.passes
+            if not np.isfinite(found.log_weight).any():
+                return self._plain(shape)
+            weight = _normalised(found.log_weight)
+            carries = np.flatnonzero(weight > LITTLE)
+            # One row beyond what carries weight.
+            first = float(z[max(carries[0] - 1, 0)] - 0.5 * step)
+            last = float(z[min(carries[-1] + 1, ROWS - 1)] + 0.5 * step)
+            if 1.0 / float(weight @ weight) >= WANTED_ROWS:
                 break
-        return nodes, level
+        step = (last - first) / shape[0]
+        rows = first + step * (np.arange(shape[0]) + 0.5)
+        on = np.isfinite(found.half)
+        middle = np.interp(rows, z[on], found.middle[on])
+        room = WIDER * np.interp(rows, z[on], found.half[on]) + np.abs(np.gradient(middle))
+        final = self._valley(rows, Valley(middle, room, np.zeros(len(rows)), 0))
+        on = np.isfinite(final.half)
+        if not on.any():
+            return self._plain(shape)
+        part = (np.arange(shape[1]) + 0.5) / shape[1] * 2.0 - 1.0
+        x = final.middle[on, None] + final.half[on, None] * part
+        cell = np.repeat(step * 2.0 * final.half[on] / shape[1], shape[1])
+        nodes = self.fitted(Raster(np.repeat(np.exp(rows[on]), shape[1]), x.reshape(-1), cell))
+        if not np.isfinite(nodes.log_weight()).any():
+            return self._plain(shape)
+        return nodes, levels + final.passes + 1
+
+    def _plain(self, shape: tuple[int, int]) -> tuple[_Nodes, int] | None:
+        """The raster of the whole region, where no valley is found: what fits best of it is at least told."""
+        for rows in (shape[0], 4 * shape[0]):
+            # A thin region can slip through the coarser raster.
+            whole = raster(self.one, self.gm, self.limits, (rows, shape[1]))
+            nodes = None if whole is None else self.fitted(whole)
+            if nodes is not None and np.isfinite(nodes.log_weight()).any():
+                return nodes, 1
+        return None
+
+    def _valley(self, z: Array, near: Valley | None) -> Valley:
+        """Where the weight lies at ranges of logarithm ``z``."""
+        rho = np.exp(z)
+        low, high = range_rate_bounds(self.one, self.gm, self.limits, rho)
+
+        def log_weight_at(rows: Array, x: Array, width: Array) -> Array:
+            columns = x.shape[1]
+            nodes = self.fitted(Raster(np.repeat(rho[rows], columns), x.reshape(-1), np.repeat(width, columns)))
+            return nodes.log_weight().reshape(x.shape)
+
+        return valley(log_weight_at, low, high, near)
 
     def fitted(self, nodes: Raster) -> _Nodes:
         """Fit direction and rates at every node inside the limits."""
@@ -435,41 +471,6 @@ def _effective(log_weight: Array) -> float:
         return 0.0
     weight = _normalised(log_weight)
     return float(1.0 / np.sum(weight * weight))
-
-
-def _flattening(nodes: _Nodes) -> float:
-    """Least division of the chi-square that leaves enough effective nodes."""
-    low, high = 0.0, 60.0
-    for _ in range(40):
-        middle = 0.5 * (low + high)
-        if _effective(nodes.log_weight(float(np.exp(middle)))) >= WANTED_COARSE:
-            high = middle
-        else:
-            low = middle
-    return float(np.exp(high))
-
-
-def _along_valley(nodes: _Nodes, flat: float, shape: tuple[int, int]) -> Raster:
-    """Raster around flattened weights: ranges about their mean, range rates about a cubic in log rho."""
-    weight = _normalised(nodes.log_weight(flat))
-    use = weight > 1e-12
-    weight, z, x = weight[use], np.log(nodes.rho[use]), nodes.x[use]
-    middle = float(weight @ z) / float(weight.sum())
-    # Never below a part of the spread of what carries weight, should one node hold it all.
-    size = max(float(np.sqrt(weight @ (z - middle) ** 2)), 1e-9)
-    u = (z - middle) / size
-    degree = int(np.clip(np.unique(z.round(12)).size - 1, 0, DEGREE))
-    root = np.sqrt(weight)
-    powers = np.arange(degree + 1)
-    curve = np.linalg.lstsq((u[:, None] ** powers) * root[:, None], x * root, rcond=1e-10)[0]
-    off = x - (u[:, None] ** powers) @ curve
-    thick = max(float(np.sqrt(weight @ off**2)), 1e-9 * float(np.abs(x).max()), 1e-12)
-    rows, columns = (WIDTH * ((np.arange(n) + 0.5) / n * 2.0 - 1.0) for n in shape)
-    along = (rows[:, None] ** powers) @ curve
-    place = along[:, None] + thick * columns[None]
-    cell = size * thick * (2.0 * WIDTH) ** 2 / (shape[0] * shape[1])
-    rho = np.broadcast_to(np.exp(middle + size * rows)[:, None], place.shape)
-    return Raster(rho.reshape(-1), place.reshape(-1), np.full(place.size, cell))
 
 
 def _sample(lines: LineSet, one: Attributable, nodes: _Nodes, levels: int, assumption: str) -> RangingSample:

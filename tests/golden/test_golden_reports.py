@@ -11,6 +11,7 @@ from __future__ import annotations
 import html
 import os
 import re
+from functools import cache
 from pathlib import Path
 from typing import Any
 
@@ -31,11 +32,14 @@ HYPERBOLIC = fa.State([7000.0, -1200.0, 3400.0], [1.125, 10.875, 4.25], EPOCH, "
 MINOR_PLANET = fa.State([-1.125e8, -1.25e8, -5.5e7], [20.125, -23.75, -5.0625], EPOCH, "sun")
 
 
+@cache
 def reports() -> dict[str, Any]:
     """Name of the file to something that is shown."""
     obs, sun = invented("SATELLITE"), invented("MINOR_PLANET")
     pre = fa.preliminary(obs, pick=(2, 4, 7))
     about_sun = fa.preliminary(sun, pick=(0, 4, 8))
+    two_nights = invented("SLOW_CLOCK")[:14]
+    nearby = fa.preliminary(two_nights)
     return {
         "observations_satellite": obs,
         "observations_minor_planet": sun,
@@ -49,6 +53,11 @@ def reports() -> dict[str, Any]:
         "candidate_minor_planet": about_sun.best,
         "stage_gauss": pre.best.gauss,
         "stage_gibbs": pre.best.gibbs,
+        "fit_satellite": fa.fit(two_nights, start=nearby),
+        "fit_estimates": fa.fit(two_nights, start=nearby, estimate=["clock:QLN"]),
+        "fit_minor_planet": fa.fit(sun, start=about_sun),
+        "fit_by_hand": fa.fit(obs, start=pre, forces="two-body", keep=[0], leave_out=[3]),
+        "fit_undetermined": fa.fit(sun[:6], start=about_sun.best, forces="two-body"),
         "state_satellite": SATELLITE,
         "state_minor_planet": MINOR_PLANET,
         "state_hyperbolic": HYPERBOLIC,

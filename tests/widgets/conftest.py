@@ -176,12 +176,20 @@ def _orbit_table(frame: FrameWriter) -> dict[str, Any]:
         }
 
     rows = (
-        ("a", "a", "semi-major axis", "km", ("24\u2009707", "23\u2009222", "24\u2009468"), (2, 1, 2), "9"),
-        ("e", "e", "eccentricity", "", ("0.70759", "0.69561", "0.70004"), (3, 3, 6), "0.00003"),
-        ("i_deg", "i", "inclination", "°", ("24.6153", "24.6153", "24.6105"), (4, 4, 4), "0.0013"),
-        ("node_deg", "Ω", "node", "°", ("22.3530", "22.3530", "22.2896"), (2, 2, 4), "0.0014"),
-        ("argp_deg", "ω", "argument of perigee", "°", ("4.575", "1.994", "4.609"), (1, 0, 1), "0.016"),
-        ("M_deg", "M", "mean anomaly", "°", ("44.47", "49.85", "45.73"), (1, 1, 2), "0.02"),
+        (
+            "a",
+            "a",
+            "semi-major axis",
+            "km",
+            ("24\u2009707", "23\u2009222", "24\u2009471", "24\u2009468"),
+            (2, 1, 5),
+            "9",
+        ),
+        ("e", "e", "eccentricity", "", ("0.70759", "0.69561", "0.70004", "0.70001"), (3, 3, 6), "0.00003"),
+        ("i_deg", "i", "inclination", "°", ("24.6153", "24.6153", "24.6105", "24.6101"), (4, 4, 6), "0.0013"),
+        ("node_deg", "Ω", "node", "°", ("22.3530", "22.3530", "22.2896", "22.2893"), (2, 2, 6), "0.0014"),
+        ("argp_deg", "ω", "argument of perigee", "°", ("4.575", "1.994", "4.609", "4.613"), (1, 0, 4), "0.016"),
+        ("M_deg", "M", "mean anomaly", "°", ("44.47", "49.85", "45.73", "45.71"), (1, 1, 4), "0.02"),
     )
     table = [
         {
@@ -190,11 +198,11 @@ def _orbit_table(frame: FrameWriter) -> dict[str, Any]:
             "name": name,
             "unit": unit,
             "kind": "element",
-            "cells": [*(cell(v, k) for v, k in zip(values, agree, strict=True)), cell(sigma), cell("·")],
+            "cells": [*(cell(v, k) for v, k in zip(values, (*agree, 0), strict=True)), cell(sigma), cell("·")],
         }
         for key, symbol, name, unit, values, agree, sigma in rows
     ]
-    miss = [cell("252.8"), cell("825.8"), cell("0.0"), cell(""), cell("")]
+    miss = [cell("252.8"), cell("825.8"), cell("0.0"), cell(""), cell(""), cell("")]
     table.append(
         {"key": "miss", "symbol": ["miss"], "name": "miss", "unit": "″", "kind": "miss", "cells": miss}
     )
@@ -206,11 +214,12 @@ def _orbit_table(frame: FrameWriter) -> dict[str, Any]:
         ("step 3", 9e-11),
     ]
     return {
-        "note": "at 21:23:27.30 UTC, ICRF equator. Underlined digits agree with the converged orbit.",
+        "note": "at 21:23:27.30 UTC, ICRF equator. Underlined digits agree with least squares.",
         "columns": [
             {"title": "Gauss estimate", "sub": "root A, row 5", "kind": "stage"},
             {"title": "Gibbs correction", "sub": "Gibbs chosen", "kind": "stage"},
             {"title": "Converged", "sub": "3 Newton steps", "kind": "stage"},
+            {"title": "Least squares", "sub": "8 rows, perturbed", "kind": "fit"},
             {"title": "± σ", "sub": "", "kind": "sigma"},
             {"title": "Δ recorded", "sub": "no what-if", "kind": "recorded"},
         ],
@@ -290,9 +299,12 @@ def build_scene(title: str = "0417-A", ghost: bool = False) -> tuple[dict[str, A
             "station": "BRN",
             "any": False,
             "sliders": [],
+            "estimate": {"asked": "", "text": "", "offsets": {}, "station": ""},
         },
         "candidates": {
             "note": "3 positive roots, 1 admissible",
+            "methods": [{"key": "gauss", "label": "Gauss"}, {"key": "laplace", "label": "Laplace"}],
+            "method": "gauss",
             "head": [["root"], ["r km"], ["slant ranges 3·5·8 km"], ["a km"], ["e"], ["rms others ″"]],
             "rows": [
                 {
@@ -356,11 +368,14 @@ def build_scene(title: str = "0417-A", ghost: bool = False) -> tuple[dict[str, A
             "seq": -1,
             "pick": list(PICK),
             "excluded": [6],
+            "kept": [],
+            "estimate": "",
             "station": "BRN",
             "offsets": {},
             "row_clock": {},
             "row": 4,
             "candidate": "A",
+            "method": "gauss",
             "held": False,
             "widths": {"residuals": 480, "sky": 366, "orbit": 366, "root": 230},
         },

@@ -7,6 +7,7 @@ import math
 from hypothesis import given
 from hypothesis import strategies as st
 
+from firstarc.pipeline import METHODS
 from firstarc.widgets.settings import LARGEST, Settings, checked
 
 BEFORE = Settings(pick=(0, 4, 8), station="BRN", row=4)
@@ -17,7 +18,7 @@ anything = st.recursive(
     lambda inner: st.lists(inner, max_size=4) | st.dictionaries(st.text(max_size=8), inner, max_size=4),
     max_leaves=12,
 )
-keys = st.sampled_from(["pick", "excluded", "station", "offsets", "row_clock", "row", "candidate", "held", "widths", "seq"])
+keys = st.sampled_from(list(BEFORE.as_dict()))
 
 
 @given(st.dictionaries(keys, anything))
@@ -25,6 +26,9 @@ def test_anything_from_the_browser_gives_settings_that_can_be_used(raw):
     settings = checked(raw, BEFORE, 9, STATIONS)
     assert len(set(settings.pick)) == 3 and all(0 <= row < 9 for row in settings.pick)
     assert all(0 <= row < 9 for row in settings.excluded)
+    assert all(0 <= row < 9 for row in settings.kept) and not set(settings.kept) & set(settings.excluded)
+    assert settings.method in METHODS
+    assert settings.estimate in ("", "clock:BRN", "clock:QLN", "station:BRN", "station:QLN")
     assert settings.station in STATIONS and 0 <= settings.row < 9
     for code, values in settings.offsets.items():
         assert code in STATIONS
@@ -55,3 +59,21 @@ def test_what_the_browser_sets_comes_into_force():
     assert (settings.candidate, settings.held, settings.seq) == ("B", True, 7)
     assert settings.widths["sky"] == 500.0
     assert settings.widths["residuals"] == BEFORE.widths["residuals"]
+
+
+def test_what_is_out_is_not_kept():
+    """Taken out by hand is the later word; rows out before stay out where the browser names none."""
+    out = Settings(pick=(0, 4, 8), station="BRN", row=4, excluded=(6,), kept=(2,))
+    assert checked({"kept": [1, 6]}, out, 9, STATIONS).kept == (1,)
+    assert checked({"excluded": [2]}, out, 9, STATIONS).kept == ()
+    assert checked({"excluded": [], "kept": [6, 2, 6]}, out, 9, STATIONS).kept == (2, 6)
+    assert checked({"kept": [9]}, out, 9, STATIONS).kept == (2,), "a row that is none: the rows in force stay"
+
+
+def test_estimates_and_methods_are_those_there_are():
+    chosen = checked({"estimate": "station:QLN", "method": "laplace"}, BEFORE, 9, STATIONS)
+    assert (chosen.estimate, chosen.method) == ("station:QLN", "laplace")
+    for raw in ({"estimate": "clock:XYZ", "method": "best"}, {"estimate": ["clock:BRN"], "method": None}, {}):
+        kept = checked(raw, chosen, 9, STATIONS)
+        assert (kept.estimate, kept.method) == ("station:QLN", "laplace")
+    assert checked({"estimate": ""}, chosen, 9, STATIONS).estimate == ""

@@ -73,12 +73,41 @@ def test_it_shows_the_numbers_of_the_desk(build_scene: Any) -> None:
     for row in scene["observations"]["rows"]:
         assert row["ra"] in text and row["oc_dec"] in text and row["time"] in text
     for row in scene["orbit"]["rows"]:
-        for cell in row["cells"][:4]:
+        for cell in row["cells"]:
             assert cell["whole"] + cell["fraction"] in text
     for check in scene["checks"]:
         assert check["text"] in text
+    for column in scene["orbit"]["columns"]:
+        assert column["title"] in text and column["sub"] in text
     assert "rejected: perigee" in text
     assert scene["code"] in text
+
+
+def test_the_least_squares_column_stands_out_in_every_row(build_scene: Any) -> None:
+    """Heading and values carry the class of the last column; the row of the miss leaves it to the convergence."""
+    scene, frame = build_scene()
+    html = static_html(scene, frame, css="")
+    table = html[html.index('<table class="stg">') : html.index("</table>", html.index('<table class="stg">'))]
+    values = [row for row in scene["orbit"]["rows"] if row["kind"] == "element"]
+    assert '<th scope="col" class="lv">Least squares<span class="sb">8 rows, perturbed</span></th>' in table
+    assert table.count('<td class="lv">') == len(values)
+    assert '<td class="lv"><span class="n"><i>24\u2009468</i><i></i></span></td>' in table
+    assert '<td class="cvm" colspan="3">' in table, "fit, sigma and change give way to the convergence"
+    for body_row in table.split("<tbody>")[1].split("</tr>")[:-1]:
+        spans = [int(n) - 1 for n in re.findall(r'colspan="(\d+)"', body_row)]
+        assert len(re.findall(r"<td", body_row)) + sum(spans) == len(scene["orbit"]["columns"])
+
+
+def test_while_held_the_column_says_what_it_waits_for(build_scene: Any) -> None:
+    scene, frame = build_scene()
+    scene["orbit"]["columns"][3]["sub"] = "when the hand rests"
+    for row in scene["orbit"]["rows"]:
+        row["cells"][3].update(whole="–" if row["kind"] == "element" else "", fraction="")
+    scene["headline"][0] = ["Computing."]
+    scene["candidates"]["rows"] = []
+    text = "".join(Reader(static_html(scene, frame, css="")).texts)
+    assert "when the hand rests" in text and "24\u2009468" not in text
+    assert "24\u2009468" not in static_text(scene)
 
 
 def test_underlined_digits_are_those_that_agree(build_scene: Any) -> None:

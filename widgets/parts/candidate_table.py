@@ -75,13 +75,15 @@ def candidate_row(snap: Snapshot, candidate: Candidate, scale: float) -> dict[st
             significant(elements.periapsis_height_km, 4) if earth else significant(elements.q_au, 4),
             rms_text(candidate.rms_others_arcsec),
         ]
+    # the automatic choice tries several methods; a rejected row has no cells, so its reason names the method
+    tried = f"{METHODS[candidate.method].label}, " if snap.method == "auto" else ""
     return {
         "letter": candidate.letter,
         "admissible": candidate.admissible,
         "chosen": snap.chosen is not None and candidate.letter == snap.chosen.letter,
         "root": significant(candidate.root_km * scale, 5),
         "cells": cells,
-        "reason": "" if candidate.admissible else f"rejected: {candidate.reason}",
+        "reason": "" if candidate.admissible else f"{tried}rejected: {candidate.reason}",
     }
 
 

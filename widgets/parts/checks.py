@@ -85,7 +85,8 @@ def fit_residual_checks(fit: OrbitFit) -> list[dict[str, Any]]:
 
 
 def chi2_words(value: float) -> str:
-    return significant(value, 3) if value < 1e6 else scientific(value)
+    """A chi-square to three digits, with a power of ten where it is very small or very large."""
+    return significant(value, 3) if 1e-3 <= value < 1e6 else scientific(value)
 
 
 def percent(fraction: float) -> str:
@@ -163,6 +164,5 @@ def verdict_on_residuals(head: str, chance: float) -> dict[str, Any]:
     if chance > 1.0 - CHANCE_LIMIT:
         words = f"{head}, chance {fixed(chance, 4)}: smaller than the stated sigmas allow"
         return check("Residuals below σ", words, (1.0 - chance) / CHANCE_LIMIT, fails=False)
-    words = f"{head}, chance {fixed(chance, 2)}, {limit}"
     words = f"{head}, chance {fixed(chance, 2)}, {limit}"
     return check("Residuals match σ", words, chance / CHANCE_LIMIT, fails=False)

@@ -41,14 +41,22 @@ def fit_verdict(snap: Snapshot, fit: OrbitFit) -> tuple[list[Any], bool]:
     if fit.determined:
         runs = element_runs(snap, element_rows(fit.elements), sigma_rows(fit.elements, fit.sigmas))
         return [text("Determined.", b=1), f" {about[0].upper()}{about[1:]}: ", *runs, "."], False
-    sample = fit.sample
-    span = ""
-    if np.isfinite(sample.best.state).all():
-        low, high = sample.quantiles(sample.range_km, (0.05, 0.95))
-        unit, scale = ("km", 1.0) if snap.center == "earth" else ("au", AU_KM)
-        span = f" between {significant(low / scale, 3)} and {significant(high / scale, 3)} {unit} (90 % of the sample)"
-    count = int(fit.used.sum())
-    return [text("Not determined.", b=1), f" {count} observations leave the slant range open{span}."], True
+    words = f" {int(fit.used.sum())} observations leave the slant range open{range_words(snap, fit.sample)}."
+    if not fit.verdicts.single.ok:
+        words += f" {fit.verdicts.single.sentence}"
+    return [text("Not determined.", b=1), words], True
+
+
+def range_words(snap: Snapshot, sample: Any) -> str:
+    """Where 90 % of a weighted sample lies. A sample none of whose orbits fits says nothing about the range."""
+    if not sample.status.ok or not np.isfinite(sample.best.state).all():
+        return "; no sampled orbit fits them that could say how far"
+    ends = sample.quantiles(sample.range_km, (0.05, 0.95))
+    unit, scale = ("km", 1.0) if snap.center == "earth" else ("au", AU_KM)
+    # as many digits as it takes to tell the ends apart
+    pairs = [tuple(significant(float(end) / scale, digits) for end in ends) for digits in range(3, 9)]
+    low, high = next((pair for pair in pairs if pair[0] != pair[1]), pairs[-1])
+    return f" between {low} and {high} {unit} (90 % of the sample)"
 
 
 def fit_basis(snap: Snapshot, fit: OrbitFit) -> list[Any]:

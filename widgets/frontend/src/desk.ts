@@ -46,13 +46,18 @@ function render({ model, el }: { model: Model; el: HTMLElement }): () => void {
   el.append(root);
   keepKeys(root, cleanUp);
 
-  let request = 0;
+  let due = false;
   let frame = floats(null);
   let frameOf: DataView | null | undefined = null;
   let paintedSeq: number | null = null;
 
+  /** One painting for all that arrives together, in time for the very next frame. */
   function schedule(): void {
-    if (!request) request = requestAnimationFrame(paint);
+    if (due) return;
+    due = true;
+    queueMicrotask(() => {
+      if (due) paint();
+    });
   }
 
   function wait(waiting: Waiting): void {
@@ -61,7 +66,7 @@ function render({ model, el }: { model: Model; el: HTMLElement }): () => void {
   }
 
   function paint(): void {
-    request = 0;
+    due = false;
     const scene = model.get("scene");
     if (!scene?.headline) return;
     if (empty.parentNode) empty.replaceWith(inner);
@@ -119,7 +124,7 @@ function render({ model, el }: { model: Model; el: HTMLElement }): () => void {
     model.off("change:frame", schedule);
     observer.disconnect();
     clearTimeout(measuring);
-    cancelAnimationFrame(request);
+    due = false;
     if (sync.current.held) sync.change(() => ({ held: false }), true);
     sync.dispose();
     root.remove();
