@@ -83,7 +83,5 @@ def link_packages(root: Path) -> None:
                 continue
             path.unlink()
         elif path.exists():
-            raise SystemExit(
-                f"an editable install needs a link at {link}, but something else is there: move it."
-            )
+            raise SystemExit(f"an editable install needs a link at {link}, but something else is there: move it.")
         path.symlink_to(wanted, target_is_directory=True)

@@ -406,8 +406,7 @@ def _starts(obs: Observations, start: Any) -> tuple[list[State], str]:
     good = [c for c in start.candidates if c.admissible and c.state is not None]
     if not good:
         raise UsageError(
-            f"no admissible preliminary orbit to start from: {start.status} Give start= a State, or other "
-            "observations."
+            f"no admissible preliminary orbit to start from: {start.status} Give start= a State, or other observations."
         )
     letters = ", ".join(c.letter for c in good)
     return [c.state for c in good if c.state is not None], f"every admissible candidate ({letters})"

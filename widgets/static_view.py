@@ -194,9 +194,7 @@ def _observations(table: dict[str, Any], warnings: Sequence[str]) -> str:
         big = " big" if row["big"] else ""
         cells = (("r", number), ("r", row["time"]), ("l", station), ("r", row["ra"]), ("r", row["dec"]),
                  ("r", row["oc_ra"]), ("r", row["oc_dec"]), (f"r{big}", row["chi"]))  # fmt: skip
-        body.append(
-            "<tr>" + "".join(f'<td class="{css}">{escape(text)}</td>' for css, text in cells) + "</tr>"
-        )
+        body.append("<tr>" + "".join(f'<td class="{css}">{escape(text)}</td>' for css, text in cells) + "</tr>")
     note = "; ".join(text for text in (table["note"], "■ pick, ( ) out") if text)
     doubts = "".join(f'<p class="foot">{escape(text)}</p>' for text in warnings)
     foot = f'<p class="foot">{escape(table["foot"])}</p>' if table["foot"] else ""

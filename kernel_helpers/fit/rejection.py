@@ -136,9 +136,7 @@ def next_selection(
     return new, too_many
 
 
-def reasons(
-    chi2: Array, used: Array, manual: Array, components: Array, rule: RejectionRule | None
-) -> tuple[str, ...]:
+def reasons(chi2: Array, used: Array, manual: Array, components: Array, rule: RejectionRule | None) -> tuple[str, ...]:
     """Why each observation is in or out, in words."""
     count = int((manual >= 0).sum())
     limit, back = rule.limits(count, components) if rule else (np.full(chi2.shape, np.inf),) * 2

@@ -26,9 +26,7 @@ _TELLING = frozenset({"permID", "provID", "artSat", "trkSub", "obsTime", "stn", 
 def looks_like_keyword_record(line: str) -> bool:
     """True for a line of pipe-separated field names that begin with a lower-case letter."""
     cells = _cells(line)
-    return (
-        len(cells) > 1 and bool(_TELLING & set(cells)) and all(c == "" or _NAME.fullmatch(c) for c in cells)
-    )
+    return len(cells) > 1 and bool(_TELLING & set(cells)) and all(c == "" or _NAME.fullmatch(c) for c in cells)
 
 
 def _cells(line: str) -> list[str]:
@@ -77,8 +75,7 @@ def read_psv(text: str) -> tuple[PlainInput, list[Problem]]:
                     f"line {number}",
                     shortened(line),
                     "stands before any keyword record",
-                    "Put the line of field names (trkSub|mode|stn|obsTime|ra|dec|...) above the first "
-                    "observation",
+                    "Put the line of field names (trkSub|mode|stn|obsTime|ra|dec|...) above the first observation",
                 )
             )
             continue
@@ -113,9 +110,7 @@ def _trimmed(names: list[str]) -> list[str]:
 def _keyword_problems(names: list[str], number: int) -> list[Problem]:
     twice = sorted({n for n in names if n and names.count(n) > 1})
     return [
-        Problem(
-            f"line {number}, field {n}", n, "is named twice in one keyword record", "Name each field once"
-        )
+        Problem(f"line {number}, field {n}", n, "is named twice in one keyword record", "Name each field once")
         for n in twice
     ]
 

@@ -12,8 +12,7 @@ ADES_PSV, CSV, ECSV = "ADES PSV", "CSV", "ECSV"
 #: Formats that are known by sight but not read, with what to do instead.
 NOT_READ = {
     "ADES XML": "Convert it to ADES PSV",
-    "CCSDS tracking data message": "Write its angles as CSV with ra_deg, dec_deg, time_utc and station "
-    "columns",
+    "CCSDS tracking data message": "Write its angles as CSV with ra_deg, dec_deg, time_utc and station columns",
     "MPC 80-column": "Convert it to ADES PSV",
     "two-line elements": "It holds an orbit, not observations",
     "XML": "Convert it to ADES PSV or CSV",

@@ -51,9 +51,7 @@ def read_csv(text: str) -> tuple[PlainInput, list[Problem]]:
             break
         except csv.Error as error:
             problems.append(
-                Problem(
-                    f"line {first + reader.line_num}", "", f"is not valid CSV ({error})", "Close the quotes"
-                )
+                Problem(f"line {first + reader.line_num}", "", f"is not valid CSV ({error})", "Close the quotes")
             )
             break
         cells = [c.strip() for c in cells]
@@ -72,14 +70,11 @@ def read_csv(text: str) -> tuple[PlainInput, list[Problem]]:
                     f"line {started}",
                     shortened(delimiter.join(cells)),
                     f"has {len(cells)} cells where the head line names {len(names)} columns",
-                    "Give every column a cell, empty where there is no value; quote a cell that holds the "
-                    "delimiter",
+                    "Give every column a cell, empty where there is no value; quote a cell that holds the delimiter",
                 )
             )
             continue
-        rows.append(
-            PlainRow(f"line {started}", {n: c for n, c in zip(names, cells, strict=False) if n and c})
-        )
+        rows.append(PlainRow(f"line {started}", {n: c for n, c in zip(names, cells, strict=False) if n and c}))
     return PlainInput("CSV", False, tuple(rows), tuple(header), tuple(n for n in names if n)), problems
 
 
@@ -87,8 +82,7 @@ def _head_problems(names: Sequence[str], line: int | None) -> list[Problem]:
     where = f"line {line}" if line else "column names"
     twice = sorted({n for n in names if n and list(names).count(n) > 1})
     return [
-        Problem(f"{where}, column {n}", n, "is the name of two columns", "Give each column its own name")
-        for n in twice
+        Problem(f"{where}, column {n}", n, "is the name of two columns", "Give each column its own name") for n in twice
     ]
 
 

@@ -183,9 +183,7 @@ class Raster(NamedTuple):
     measure: Array
 
 
-def raster(
-    one: Attributable, gm_km3_s2: float, limits: RegionLimits, shape: tuple[int, int]
-) -> Raster | None:
+def raster(one: Attributable, gm_km3_s2: float, limits: RegionLimits, shape: tuple[int, int]) -> Raster | None:
     """Raster of the whole region: ranges by logarithm, range rates evenly between the bounds of each range.
 
     None where no slant range is admitted.

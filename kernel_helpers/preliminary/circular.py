@@ -229,9 +229,7 @@ def _roots(lines: LineSet, rho1: Array, branch: float, whole: int, long: bool) -
     return np.unique(roots), closest
 
 
-def _least(
-    lines: LineSet, left: Array, right: Array, sign: Array, branch: float, whole: int, long: bool
-) -> Array:
+def _least(lines: LineSet, left: Array, right: Array, sign: Array, branch: float, whole: int, long: bool) -> Array:
     """Where sign F is least between two ranges, by golden section."""
     golden = (np.sqrt(5.0) - 1.0) / 2.0
     for _ in range(45):
@@ -274,4 +272,3 @@ def _orbit(lines: LineSet, rho1: float, branch: float, whole: int, long: bool, b
         METHOD, assumption, lines.rows, outcome, Status(outcome.code, text), remark, a, state, state.copy(), t_state,
         seen.range_km, seen.positions_km, seen.emission_t_s, miss, covariance, sigma, BISECTIONS,
     )  # fmt: skip
-

@@ -185,9 +185,7 @@ def misses(lines: LineSet, state: Array, t_state_s: float) -> Misses:
         flat, t_state_s, lines.t_s, lines.observer_km, lines.moving_km_s, lines.gm_km3_s2, lines.light_time
     )
     with np.errstate(all="ignore"):
-        r, v, stm = propagate_with_partials(
-            flat[:, None, :3], flat[:, None, 3:], emission - t_state_s, lines.gm_km3_s2
-        )
+        r, v, stm = propagate_with_partials(flat[:, None, :3], flat[:, None, 3:], emission - t_state_s, lines.gm_km3_s2)
         east, north = tangent_axes(lines.unit)
         push = stm[..., :3, :]
         moved = (v + lines.moving_km_s) * lines.per_c

@@ -212,9 +212,7 @@ def in_fresh_python(code: str) -> str:
 
 
 def test_import_firstarc_loads_nothing_heavy() -> None:
-    loaded = in_fresh_python(
-        "import sys, firstarc; print(*sorted({m.partition('.')[0] for m in sys.modules}))"
-    )
+    loaded = in_fresh_python("import sys, firstarc; print(*sorted({m.partition('.')[0] for m in sys.modules}))")
     names = set(loaded.split())
     assert "firstarc" in names
     assert names & HEAVY == set()

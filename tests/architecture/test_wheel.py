@@ -119,9 +119,7 @@ def test_wheel_holds_the_tree_and_nothing_else(made: Made) -> None:
 
 
 def test_sdist_holds_the_project_and_nothing_else(made: Made) -> None:
-    found = {
-        path.relative_to(made.unpacked).as_posix() for path in made.unpacked.rglob("*") if path.is_file()
-    }
+    found = {path.relative_to(made.unpacked).as_posix() for path in made.unpacked.rglob("*") if path.is_file()}
     assert found == kept_files() | BUILT | {"PKG-INFO"}
 
 
@@ -138,16 +136,11 @@ def test_wheel_from_sdist_equals_wheel_from_tree_and_needs_no_npm(made: Made, tm
 
 def test_front_end_that_does_not_build_is_named(made: Made, tmp_path: Path) -> None:
     tree = copy_of_tree(tmp_path / "tree")
-    shutil.copytree(
-        made.tree / "widgets/frontend/node_modules", tree / "widgets/frontend/node_modules", symlinks=True
-    )
+    shutil.copytree(made.tree / "widgets/frontend/node_modules", tree / "widgets/frontend/node_modules", symlinks=True)
     (tree / "widgets/frontend/src/desk.ts").write_text("export default { render( {\n")
     done = build(tree, "wheel", tmp_path / "out")
     assert done.returncode != 0
-    assert (
-        "firstarc's browser side cannot be built: 'npm run build' in widgets/frontend"
-        in done.stdout + done.stderr
-    )
+    assert "firstarc's browser side cannot be built: 'npm run build' in widgets/frontend" in done.stdout + done.stderr
     assert not list((tmp_path / "out").glob("*.whl"))
 
 
@@ -206,9 +199,7 @@ def test_wheel_imports_in_an_empty_environment(made: Made, tmp_path: Path) -> No
 
 def test_editable_install_is_live(made: Made, tmp_path: Path) -> None:
     tree = copy_of_tree(tmp_path / "tree")
-    shutil.copytree(
-        made.tree / "widgets/frontend/node_modules", tree / "widgets/frontend/node_modules", symlinks=True
-    )
+    shutil.copytree(made.tree / "widgets/frontend/node_modules", tree / "widgets/frontend/node_modules", symlinks=True)
     out = tmp_path / "out"
     out.mkdir()
     code = f"import hatchling.build as b; print(b.build_editable({str(out)!r}))"

@@ -17,11 +17,11 @@ from pathlib import Path
 
 import numpy as np
 
-ROOT = Path(__file__).resolve().parents[2]
-sys.path.insert(0, str(ROOT / "tests"))
+sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 
 from browser.lab_session import CHROMIUM_ARGUMENTS, open_and_run, running_lab
 
+ROOT = Path(__file__).resolve().parents[2]
 EVENTS = 120
 
 SINGLE = """async ([count]) => {
@@ -89,17 +89,21 @@ def measure(events: int = EVENTS) -> dict[str, float]:
     chromium = next(filter(None, map(shutil.which, ("chromium", "chromium-browser", "google-chrome"))), None)
     if chromium is None:
         raise SystemExit("no Chromium on PATH (Debian: apt-get install chromium)")
-    with tempfile.TemporaryDirectory() as folder, tempfile.TemporaryDirectory() as home:
-        with running_lab(Path(folder), Path(home), ROOT / "example_notebooks") as lab, sync_playwright() as playwright:
-            browser = playwright.chromium.launch(executable_path=chromium, args=CHROMIUM_ARGUMENTS)
-            page = browser.new_page(viewport={"width": 1280, "height": 1800})
-            notebook = open_and_run(page, lab, "01_first_look.ipynb")
-            page.evaluate(SINGLE, [20])
-            single = np.array(page.evaluate(SINGLE, [events]))
-            drag = page.evaluate(DRAG)
-            assert not notebook.errors, notebook.errors
-            assert notebook.python("answer = round(desk.what_if[0].clock_s, 6)") == 0.123
-            browser.close()
+    with (
+        tempfile.TemporaryDirectory() as folder,
+        tempfile.TemporaryDirectory() as home,
+        running_lab(Path(folder), Path(home), ROOT / "example_notebooks") as lab,
+        sync_playwright() as playwright,
+    ):
+        browser = playwright.chromium.launch(executable_path=chromium, args=CHROMIUM_ARGUMENTS)
+        page = browser.new_page(viewport={"width": 1280, "height": 1800})
+        notebook = open_and_run(page, lab, "01_first_look.ipynb")
+        page.evaluate(SINGLE, [20])
+        single = np.array(page.evaluate(SINGLE, [events]))
+        drag = page.evaluate(DRAG)
+        assert not notebook.errors, notebook.errors
+        assert notebook.python("answer = round(desk.what_if[0].clock_s, 6)") == 0.123
+        browser.close()
     return {
         "median_ms": float(np.median(single)),
         "p95_ms": float(np.percentile(single, 95)),

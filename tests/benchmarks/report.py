@@ -44,8 +44,9 @@ def main() -> None:
     lines = [
         "# Benchmarks",
         "",
-        f"{datetime.now(timezone.utc):%Y-%m-%d}, {processor()}, {os.cpu_count()} cores, Python {platform.python_version()}, "
-        f"numpy {numpy.__version__}, scipy {scipy.__version__}, firstarc {firstarc.__version__}.",
+        f"{datetime.now(timezone.utc):%Y-%m-%d}, {processor()}, {os.cpu_count()} cores, "
+        f"Python {platform.python_version()}, numpy {numpy.__version__}, scipy {scipy.__version__}, "
+        f"firstarc {firstarc.__version__}.",
     ]
     for title, part in PARTS:
         print(f"{title} ...", file=sys.stderr)

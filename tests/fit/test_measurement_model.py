@@ -27,9 +27,7 @@ def test_residuals_are_those_of_the_iterated_light_path(regime: str) -> None:
     here = scene(regime)
     state = here.state * (1.0 + 1e-3 * np.arange(1, 7))
     m = here.exact
-    los, distance, _ = predicted_directions(
-        state, 0.0, m.t_s, m.observer_km, m.center_velocity_km_s, here.gm, True
-    )
+    los, distance, _ = predicted_directions(state, 0.0, m.t_s, m.observer_km, m.center_velocity_km_s, here.gm, True)
     found = here.model(m).evaluate(state)
     assert np.abs(found.residual).max() > 1e-4
     np.testing.assert_allclose(found.residual, residuals_rad(m.los, los), atol=2e-14, rtol=0)
@@ -202,9 +200,7 @@ def test_deflection_enters_the_residuals() -> None:
     found = model.evaluate(here.state)
     expected = solar_deflection(found.los, m.observer_km, found.range_km)
     assert 1e-9 < np.linalg.norm(expected, axis=1).max() < 1e-7
-    np.testing.assert_allclose(
-        found.residual, residuals_rad(m.los, found.los + expected), atol=1e-15
-    )
+    np.testing.assert_allclose(found.residual, residuals_rad(m.los, found.los + expected), atol=1e-15)
 
 
 @pytest.mark.parametrize(

@@ -86,9 +86,7 @@ def test_covariance_at_another_epoch_is_the_propagated_one() -> None:
     np.testing.assert_allclose(second.state[:3], stm.r_km[0], rtol=1e-11)
     moved = stm.by_state[0] @ first.covariance @ stm.by_state[0].T
     sigma = np.sqrt(np.diag(second.covariance))
-    np.testing.assert_allclose(
-        moved / np.outer(sigma, sigma), second.covariance / np.outer(sigma, sigma), atol=1e-5
-    )
+    np.testing.assert_allclose(moved / np.outer(sigma, sigma), second.covariance / np.outer(sigma, sigma), atol=1e-5)
 
 
 def test_two_roots_of_three_observations_are_two_minima() -> None:

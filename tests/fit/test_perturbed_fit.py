@@ -63,9 +63,7 @@ def test_partials_along_a_perturbed_orbit() -> None:
     state = np.array([42164.0, 0.0, 0.0, 0.0, 3.07, 0.2])
     t = np.linspace(-DAY_S, DAY_S, 9)
     m = seen_along(forces, state, t)
-    model = MeasurementModel(
-        m, Perturbed(forces, ("area_to_mass_m2_kg",)), 0.0, [ForceParameter("area_to_mass_m2_kg")]
-    )
+    model = MeasurementModel(m, Perturbed(forces, ("area_to_mass_m2_kg",)), 0.0, [ForceParameter("area_to_mass_m2_kg")])
     x = model.start(state)
     assert x[6] == 0.02
     found = model.evaluate(x)

@@ -36,9 +36,7 @@ def test_ten_sigmas_leave_and_the_rest_stays(regime: str) -> None:
 
 def test_a_rejected_observation_says_why() -> None:
     here = scene("leo")
-    fit = fit_orbit(
-        here.model(planted(here, np.random.default_rng(1), [4], 15.0)), here.state, 0.0, rejection=RULE
-    )
+    fit = fit_orbit(here.model(planted(here, np.random.default_rng(1), [4], 15.0)), here.state, 0.0, rejection=RULE)
     assert np.flatnonzero(~fit.used).tolist() == [4]
     assert fit.reasons[4].startswith("rejected: chi-square")
     assert all(reason == "used" for k, reason in enumerate(fit.reasons) if k != 4)
@@ -50,18 +48,14 @@ def test_a_rejected_observation_says_why() -> None:
 def test_a_gross_error_spoils_its_neighbours_only_for_a_while() -> None:
     """A degree off: whatever left with it comes back."""
     here = scene("geo")
-    fit = fit_orbit(
-        here.model(planted(here, np.random.default_rng(2), [0], 3600.0)), here.state, 0.0, rejection=RULE
-    )
+    fit = fit_orbit(here.model(planted(here, np.random.default_rng(2), [0], 3600.0)), here.state, 0.0, rejection=RULE)
     assert np.flatnonzero(~fit.used).tolist() == [0]
 
 
 def test_several_bad_ones() -> None:
     here = scene("main-belt")
     bad = [0, 9, 17]
-    fit = fit_orbit(
-        here.model(planted(here, np.random.default_rng(3), bad, 30.0)), here.state, 0.0, rejection=RULE
-    )
+    fit = fit_orbit(here.model(planted(here, np.random.default_rng(3), bad, 30.0)), here.state, 0.0, rejection=RULE)
     assert np.flatnonzero(~fit.used).tolist() == bad
 
 

@@ -44,9 +44,7 @@ def test_chi_square_of_a_node_is_that_of_its_orbit(kind):
     found = sampled(arc, shape=(20, 20))
 
     def chi2(states):
-        los, _, _ = predicted_directions(
-            states, found.t_state_s, arc.t_s, arc.observer_km, arc.moving, arc.gm, True
-        )
+        los, _, _ = predicted_directions(states, found.t_state_s, arc.t_s, arc.observer_km, arc.moving, arc.gm, True)
         return np.sum((residuals_rad(arc.los, los) / arc.sigma_rad) ** 2, axis=(1, 2))
 
     use = found.weight > 1e-6

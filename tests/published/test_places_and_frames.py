@@ -38,9 +38,7 @@ def test_celestial_to_terrestrial_matrix_of_the_sofa_cookbook() -> None:
     case = CASES["frames_sofa_cookbook_2007"]
     tai1, tai2 = instant(case)
     mas = 1e-3
-    orientation = given_orientation(
-        case, case["inputs"]["dX_2006_mas"] * mas, case["inputs"]["dY_2006_mas"] * mas
-    )
+    orientation = given_orientation(case, case["inputs"]["dX_2006_mas"] * mas, case["inputs"]["dY_2006_mas"] * mas)
     tt1, tt2 = tt_from_tai(tai1, tai2)
     # The document takes the pole from the series for X and Y, the library from the precession-nutation
     # matrix.
@@ -64,9 +62,7 @@ def test_position_and_velocity_of_vallado_3_14() -> None:
     orientation = given_orientation(case, case["inputs"]["dX_arcsec"], case["inputs"]["dY_arcsec"])
     matrix = rotation_to_terrestrial(tai1, tai2, orientation)
     itrf_km = np.array([case["inputs"]["itrf_km"]])
-    position_km, turning_km_s = frames.station_on_icrf_axes(
-        matrix, itrf_km, orientation.xp_rad, orientation.yp_rad
-    )
+    position_km, turning_km_s = frames.station_on_icrf_axes(matrix, itrf_km, orientation.xp_rad, orientation.yp_rad)
     assert_published(case, "gcrf06_km", position_km[0])
     own_km_s = np.einsum("nij,ni->nj", matrix, np.array([case["inputs"]["itrf_km_s"]]))
     assert_published(case, "gcrf06_km_s", (own_km_s + turning_km_s)[0])
@@ -85,9 +81,7 @@ def test_palomar_of_meeus_11a() -> None:
 def test_parallax_constants_and_geodetic_place_agree() -> None:
     """Meeus 11.a again, on WGS 84: the other ellipsoid moves the constants by less than 1e-6."""
     case = CASES["site_meeus_11a_palomar"]
-    rho_cos, rho_sin = frames.parallax_from_geodetic(
-        case["inputs"]["latitude_deg"], case["inputs"]["altitude_m"]
-    )
+    rho_cos, rho_sin = frames.parallax_from_geodetic(case["inputs"]["latitude_deg"], case["inputs"]["altitude_m"])
     itrs_km = frames.itrs_km_from_parallax(-116.8625, rho_cos, rho_sin)
     lon, lat, height_m = frames.geodetic_from_itrs_km(itrs_km)
     np.testing.assert_allclose([lon, lat], [-116.8625, case["inputs"]["latitude_deg"]], atol=1e-12)

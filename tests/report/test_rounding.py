@@ -24,7 +24,19 @@ from firstarc.report.rounding import (
 
 @pytest.mark.parametrize(
     ("sigma", "decimals"),
-    [(1.0, 1), (1.94, 1), (2.0, 0), (9.4, 0), (9.6, -0), (96.0, -1), (0.13, 2), (0.034, 2), (0.0996, 2), (140.0, -1), (3000.0, -3)],
+    [
+        (1.0, 1),
+        (1.94, 1),
+        (2.0, 0),
+        (9.4, 0),
+        (9.6, -0),
+        (96.0, -1),
+        (0.13, 2),
+        (0.034, 2),
+        (0.0996, 2),
+        (140.0, -1),
+        (3000.0, -3),
+    ],
 )
 def test_two_digits_after_a_leading_one_else_one(sigma, decimals):
     assert sigma_decimals(sigma) == decimals

@@ -50,9 +50,7 @@ def _sixties(text: str) -> float:
     return (-1.0 if text.startswith("-") else 1.0) * (float(a) + float(b) / 60 + float(c) / 3600)
 
 
-def kepler_positions(
-    a: float, e: float, i: float, node: float, argp: float, anomaly_deg: np.ndarray
-) -> np.ndarray:
+def kepler_positions(a: float, e: float, i: float, node: float, argp: float, anomaly_deg: np.ndarray) -> np.ndarray:
     """Positions (m, 3) on an ellipse at eccentric anomalies; angles in degrees."""
     i, node, argp = np.radians([i, node, argp])
     big_e = np.radians(anomaly_deg)
@@ -87,9 +85,7 @@ class Sample:
 
     def __init__(self) -> None:
         n = len(OBSERVATIONS)
-        self.t_s = np.array([3600.0 * _sixties(row[0]) for row in OBSERVATIONS]) - 3600.0 * _sixties(
-            "21:23:27.30"
-        )
+        self.t_s = np.array([3600.0 * _sixties(row[0]) for row in OBSERVATIONS]) - 3600.0 * _sixties("21:23:27.30")
         self.ra_dec_deg = np.array([[15.0 * _sixties(row[2]), _sixties(row[3])] for row in OBSERVATIONS])
         self.oc = np.array([row[4:6] for row in OBSERVATIONS], dtype=float)
         self.sigma = np.array([[row[6]] * 2 for row in OBSERVATIONS], dtype=float)
@@ -153,18 +149,14 @@ class Sample:
         r = np.linspace(4000.0, 44000.0, 400)
         x = r / 20000.0
         roots = np.array([10327.0, 15121.0, 23138.0]) / 20000.0
-        return r, np.prod([x - root for root in roots], axis=0) * (x**2 + 1.0) * (x + 0.8) * (x + 1.1) * (
-            x + 1.7
-        )
+        return r, np.prod([x - root for root in roots], axis=0) * (x**2 + 1.0) * (x + 0.8) * (x + 1.1) * (x + 1.7)
 
     def roots(self) -> list[Root]:
         return [Root("A", 23138.0, True, True), Root("B", 15121.0, False), Root("C", 10327.0, False)]
 
 
 def _orbit_table(frame: FrameWriter) -> dict[str, Any]:
-    def cell(
-        text: str, agree: int = 0, step: str = "", dev: bool = False, in_sigma: str = ""
-    ) -> dict[str, Any]:
+    def cell(text: str, agree: int = 0, step: str = "", dev: bool = False, in_sigma: str = "") -> dict[str, Any]:
         whole, _, fraction = text.partition(".")
         return {
             "whole": whole,
@@ -203,9 +195,7 @@ def _orbit_table(frame: FrameWriter) -> dict[str, Any]:
         for key, symbol, name, unit, values, agree, sigma in rows
     ]
     miss = [cell("252.8"), cell("825.8"), cell("0.0"), cell(""), cell(""), cell("")]
-    table.append(
-        {"key": "miss", "symbol": ["miss"], "name": "miss", "unit": "″", "kind": "miss", "cells": miss}
-    )
+    table.append({"key": "miss", "symbol": ["miss"], "name": "miss", "unit": "″", "kind": "miss", "cells": miss})
     steps = [
         ("Gauss estimate", 252.8),
         ("Gibbs correction", 825.8),

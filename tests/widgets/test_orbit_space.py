@@ -59,7 +59,10 @@ def test_an_open_orbit_is_cut_and_has_no_apoapsis() -> None:
     anomaly = np.radians(np.linspace(-130, 130, 400))
     r = 1.0 * 2.2 / (1 + 1.2 * np.cos(anomaly))
     points = np.c_[r * np.cos(anomaly), r * np.sin(anomaly), 0.3 * r * np.sin(anomaly)]
-    rows = [SpaceRow(mark, points[195 + 5 * i], np.array([1.0, 0.1 * i, 0.0])) for i, mark in enumerate(RowMark(k + 1, 60.0 * k, "AAA", pick=k + 1) for k in range(3))]
+    rows = [
+        SpaceRow(mark, points[195 + 5 * i], np.array([1.0, 0.1 * i, 0.0]))
+        for i, mark in enumerate(RowMark(k + 1, 60.0 * k, "AAA", pick=k + 1) for k in range(3))
+    ]
     frame = FrameWriter()
     orbit = SpaceOrbit(points, periapsis=points[200])
     figure = orbit_space(orbit, rows, center="sun", unit="au", body_radius=0.00465, frame=frame, width=366)

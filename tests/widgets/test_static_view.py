@@ -59,9 +59,7 @@ def test_the_picture_is_well_formed_and_self_contained(build_scene: Any) -> None
     assert reader.open == []
     assert reader.tags.count("svg") == 5
     assert "script" not in reader.tags and "link" not in reader.tags and "img" not in reader.tags
-    fetched = [
-        value for name, value in reader.attributes if name in ("src", "href", "srcset", "data", "action")
-    ]
+    fetched = [value for name, value in reader.attributes if name in ("src", "href", "srcset", "data", "action")]
     assert fetched == []
     assert not any(name.startswith("on") for name, _ in reader.attributes)
     assert "url(" not in static_view._STATIC_CSS and "@import" not in static_view._STATIC_CSS
@@ -187,10 +185,7 @@ def test_plain_text_lines_up_its_columns(build_scene: Any) -> None:
     lines = text.splitlines()
     first = next(i for i, line in enumerate(lines) if line.startswith("row"))
     table = lines[first + 1 : first + 1 + len(scene["observations"]["rows"])]
-    assert (
-        len({line.index(row["dec"]) for line, row in zip(table, scene["observations"]["rows"], strict=True)})
-        == 1
-    )
+    assert len({line.index(row["dec"]) for line, row in zip(table, scene["observations"]["rows"], strict=True)}) == 1
     assert "<" not in text
     assert lines[0] == "0417-A invented"
     assert text.endswith(scene["code"])

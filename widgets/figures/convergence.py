@@ -97,9 +97,7 @@ def convergence(
             texts.append(("text", "t", round(tx, 1), round(base, 1), anchor, text))
             break
     for i, (name, miss) in enumerate(shown):
-        items.append(
-            ("mark", "mk now u", "circle", round(x[i], 1), round(y[i], 1), 2.4, f"{name}: {_spoken(miss)}″")
-        )
+        items.append(("mark", "mk now u", "circle", round(x[i], 1), round(y[i], 1), 2.4, f"{name}: {_spoken(miss)}″"))
     items += texts
     return figure
 

@@ -94,12 +94,7 @@ class Layout:
                 rect = rows[k]
                 total = cost[k] + 0.1 * spot_index
                 for other in self._taken:
-                    if (
-                        rect[0] < other[2]
-                        and rect[2] > other[0]
-                        and rect[1] < other[3]
-                        and rect[3] > other[1]
-                    ):
+                    if rect[0] < other[2] and rect[2] > other[0] and rect[1] < other[3] and rect[3] > other[1]:
                         total += 60.0
                         if total > best_cost:
                             break

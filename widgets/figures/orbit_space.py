@@ -256,9 +256,7 @@ def _graticule(draw: Any, segs: list[dict[str, Any]], radius: float) -> None:
 
 
 def _nodes(orbit: SpaceOrbit, segs: list[dict[str, Any]], labels: list[dict[str, Any]], reach: float) -> None:
-    ends = [
-        p for p in (orbit.ascending, orbit.descending) if p is not None and np.linalg.norm(p) <= reach * 1.001
-    ]
+    ends = [p for p in (orbit.ascending, orbit.descending) if p is not None and np.linalg.norm(p) <= reach * 1.001]
     for end in ends:
         segs.append({"cls": "node", "a": (0.0, 0.0, 0.0), "b": _point(end)})
     if ends:
@@ -289,9 +287,7 @@ def _rows(rows: Sequence[SpaceRow], segs: list[dict[str, Any]], marks: list[dict
 def _apses(orbit: SpaceOrbit, center: str, reach: float, marks: list[dict[str, Any]]) -> None:
     for p, word in zip((orbit.periapsis, orbit.apoapsis), _APSES[center], strict=True):
         if p is not None and float(np.linalg.norm(p)) <= reach * 1.001:
-            marks.append(
-                {"cls": "tick", "shape": "cross", "p": _point(p), "r": 4, "text": word, "title": word}
-            )
+            marks.append({"cls": "tick", "shape": "cross", "p": _point(p), "r": 4, "text": word, "title": word})
 
 
 def _finding(orbit: SpaceOrbit, rows: Sequence[SpaceRow], name: str, cut: bool, tiny: bool) -> str:

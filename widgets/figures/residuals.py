@@ -58,9 +58,7 @@ def residuals(
     dict
         A flat figure.
     """
-    drawing = _Residuals(
-        rows, oc_arcsec, sigma_arcsec, recorded_arcsec, frame, width, memory or ScaleMemory()
-    )
+    drawing = _Residuals(rows, oc_arcsec, sigma_arcsec, recorded_arcsec, frame, width, memory or ScaleMemory())
     items = drawing.items()
     notes = [note] if note else []
     if recorded_arcsec is not None and oc_arcsec is not None and "recorded" not in note:
@@ -110,9 +108,7 @@ class _Residuals:
         empty = np.full((n, 2), np.nan)
         self.oc = empty if oc_arcsec is None else np.asarray(oc_arcsec, dtype=float).reshape(n, 2)[order]
         self.recorded = (
-            empty
-            if recorded_arcsec is None
-            else np.asarray(recorded_arcsec, dtype=float).reshape(n, 2)[order]
+            empty if recorded_arcsec is None else np.asarray(recorded_arcsec, dtype=float).reshape(n, 2)[order]
         )
         self.frame, self.width, self.memory = frame, width, memory
         self.strip = 128.0 if width <= 620.0 else 87.0
@@ -189,9 +185,7 @@ class _Residuals:
             for text in (f"{sign}\u2002σ {sigma}″", sign):
                 half = text_width(text) / 2
                 x = min(max(middle, half), self.width - half)
-                if x - half >= end + 6.0 and (
-                    first == last or half <= (self.x[last] - self.x[first]) / 2 + 14.0
-                ):
+                if x - half >= end + 6.0 and (first == last or half <= (self.x[last] - self.x[first]) / 2 + 14.0):
                     out.append(("text", "t", round(x, 1), 11, "middle", text))
                     end = x + half
                     break
@@ -290,9 +284,7 @@ class _Residuals:
         for i in picks + others:
             row = self.rows[i]
             text = str(row.row)
-            half = (
-                max(7.0, text_width(text, strong=True) / 2 + 2.5) if row.pick else text_width(text) / 2 + 1.5
-            )
+            half = max(7.0, text_width(text, strong=True) / 2 + 2.5) if row.pick else text_width(text) / 2 + 1.5
             x = self.x[i]
             if not row.pick and any(x - half < b and x + half > a for a, b in taken):
                 continue

@@ -138,9 +138,7 @@ def _knee(r: Array, values: Array, roots: Sequence[Root]) -> float:
     return float(np.clip(smallest / 2.0, 1e-12 * largest, 0.05 * largest))
 
 
-def _root_items(
-    roots: Sequence[Root], low: float, high: float, x0: float, x1: float, zero: float
-) -> list[Item]:
+def _root_items(roots: Sequence[Root], low: float, high: float, x0: float, x1: float, zero: float) -> list[Item]:
     items: list[Item] = []
     last_letter = -99.0
     for root in sorted(roots, key=lambda root: root.r):

@@ -221,9 +221,7 @@ class _Arrows:
         for anchor in ("start", "end") if ux >= -0.3 else ("end", "start"):
             left = x + 6.0 if anchor == "start" else x - 6.0 - w
             box = (left, base - 9.0, left + w, base + 2.0)
-            clash = any(
-                box[0] < b[2] and box[2] > b[0] and box[1] < b[3] and box[3] > b[1] for b in self.boxes
-            )
+            clash = any(box[0] < b[2] and box[2] > b[0] and box[1] < b[3] and box[3] > b[1] for b in self.boxes)
             if clash or left < 0 or box[2] > self.window.width or base < 10:
                 continue
             covered = _inside(self.xy, (box[0] - 5.0, box[1] - 5.0, box[2] + 5.0, box[3] + 5.0))
@@ -257,9 +255,7 @@ class _Arrows:
             """Right end and top of the emptiest place, upper right first."""
             rights = (x1 - 4.0, x0 + wide + 10.0, (x0 + x1 + wide) / 2)
             corners = [(r, t) for t in (y0, y1 - tall - 4.0) for r in rights]
-            return min(
-                corners, key=lambda c: _inside(drawn, (c[0] - wide - 4, c[1] - 4, c[0] + 4, c[1] + tall))
-            )
+            return min(corners, key=lambda c: _inside(drawn, (c[0] - wide - 4, c[1] - 4, c[0] + 4, c[1] + tall)))
 
         right, top = self.memory.keep("key", depends_on, corner)
         y = top + 6.0
@@ -330,9 +326,7 @@ def _labels(
         ends = np.array([inside[0][0], inside[-1][-1]])
         middle = xy.mean(axis=0)
         # The free end of the track is the one farther from the other stations' marks.
-        others = (
-            xy[[i for i in range(len(rows)) if i not in own]] if len(own) < len(rows) else middle[None, :]
-        )
+        others = xy[[i for i in range(len(rows)) if i not in own]] if len(own) < len(rows) else middle[None, :]
         gap = [float(np.hypot(*(others - end).T).min()) for end in ends]
         at = ends[int(gap[1] >= gap[0])] if own else ends[1]
         text = f"{track.station} {SHAPE_SIGNS[track.shape]}"

@@ -51,15 +51,11 @@ class SkyWindow:
         highest = float(np.abs(ra_dec_deg[:, 1]).max(initial=0.0))
         self.zenithal = highest > 80.0 or spread > 120.0
         self.note = (
-            f"stereographic about RA {self.ra0:.0f}°, Dec {self.dec0:+.0f}°".replace("-", "−")
-            if self.zenithal
-            else ""
+            f"stereographic about RA {self.ra0:.0f}°, Dec {self.dec0:+.0f}°".replace("-", "−") if self.zenithal else ""
         )
         x, y = self._plane(ra_dec_deg[:, 0], ra_dec_deg[:, 1])
         self._fit(x, y)
-        self._marks = (
-            self.project(ra_dec_deg[:, 0], ra_dec_deg[:, 1]) if len(ra_dec_deg) else np.zeros((1, 2))
-        )
+        self._marks = self.project(ra_dec_deg[:, 0], ra_dec_deg[:, 1]) if len(ra_dec_deg) else np.zeros((1, 2))
         #: Places of labels inside the drawing, which the figure keeps free.
         self.labelled = np.zeros((0, 2))
 
@@ -79,8 +75,7 @@ class SkyWindow:
         cos_dec = 1.0 if self.zenithal else max(float(np.cos(np.radians(self.dec0))), 0.05)
         middle = [0.0, 0.0] if self.zenithal else [self.ra0, self.dec0]
         lows, highs = (
-            [float(v.min()), float(v.max())] if len(v) else [m, m]
-            for v, m in zip((x, y), middle, strict=True)
+            [float(v.min()), float(v.max())] if len(v) else [m, m] for v, m in zip((x, y), middle, strict=True)
         )
         (x_low, x_high), (y_low, y_high) = lows, highs
         self.box = (44.0, _TOP, self.width - _RIGHT, self.height - _BOTTOM)
@@ -109,9 +104,7 @@ class SkyWindow:
     def project(self, ra_deg: ArrayLike, dec_deg: ArrayLike) -> Array:
         """Pixels (n, 2) of directions; a track that crosses the far side of the sky is broken by NaN."""
         x, y = self._plane(ra_deg, dec_deg)
-        out = np.stack(
-            [self._cx - (x - self._x_mid) * self._sx, self._cy - (y - self._y_mid) * self._sy], axis=1
-        )
+        out = np.stack([self._cx - (x - self._x_mid) * self._sx, self._cy - (y - self._y_mid) * self._sy], axis=1)
         if not self.zenithal and len(x) > 1:
             jump = np.flatnonzero(np.abs(np.diff(x)) > 180.0)
             out[jump + 1] = np.nan

@@ -52,9 +52,7 @@ def space_svg(figure: dict[str, Any], frame: bytes) -> str:
     busy: list[Array] = [points[:: max(1, len(points) // 60), :2] for _, points in scene.polylines()]
     for mark in figure["marks"]:
         x, y, depth = scene.point(mark["p"])
-        (front if depth >= 0 else back).append(
-            _mark(mark["cls"], mark["shape"], x, y, mark["r"], mark["title"])
-        )
+        (front if depth >= 0 else back).append(_mark(mark["cls"], mark["shape"], x, y, mark["r"], mark["title"]))
         busy.append(np.repeat([[x, y]], 8, axis=0))
         hidden = depth < 0 and np.hypot(x - center[0], y - center[1]) < figure["body_radius"] * scene.k
         if mark["text"] and not hidden:
@@ -70,9 +68,7 @@ def space_svg(figure: dict[str, Any], frame: bytes) -> str:
         body = _mark("tick", "cross", x, y, 4.0, "")
     else:
         body = f'<circle class="earth" cx="{x:.1f}" cy="{y:.1f}" r="{radius:.1f}"/>'
-    layout = Layout(
-        (2.0, 0.0, width - 2.0, height - FOOT_PX + 4.0), np.vstack(busy) if busy else np.zeros((0, 2))
-    )
+    layout = Layout((2.0, 0.0, width - 2.0, height - FOOT_PX + 4.0), np.vstack(busy) if busy else np.zeros((0, 2)))
     texts = layout.place(sorted(wanted, key=lambda label: not label.strong))
     foot = _foot(figure, scene.k)
     label = f"{figure['label']} It is {seen_from(figure['view'])}."
@@ -93,9 +89,7 @@ class _Projected:
         self._axes = view_axes(figure["view"]["ra_deg"], figure["view"]["dec_deg"])
         middle = self._axes @ np.asarray(figure["middle"], dtype=float)
         # The middle is taken out on the picture only: depth is counted from the body's centre.
-        self._shift = np.array(
-            [width / 2 - self.k * middle[0], (height - FOOT_PX) / 2 + self.k * middle[1], 0.0]
-        )
+        self._shift = np.array([width / 2 - self.k * middle[0], (height - FOOT_PX) / 2 + self.k * middle[1], 0.0])
 
     def points(self, points: Any) -> Array:
         seen = np.asarray(points, dtype=float) @ self._axes.T * self.k
@@ -151,9 +145,7 @@ def _svg(figure: dict[str, Any], label: str, parts: Iterable[str]) -> str:
     width, height = figure["width"], figure["height"]
     return (
         f'<svg class="fig" xmlns="http://www.w3.org/2000/svg" width="{width:g}" height="{height:g}" '
-        f'viewBox="0 0 {width:g} {height:g}" role="img" aria-label="{escape(label)}">'
-        + "".join(parts)
-        + "</svg>"
+        f'viewBox="0 0 {width:g} {height:g}" role="img" aria-label="{escape(label)}">' + "".join(parts) + "</svg>"
     )
 
 
@@ -201,7 +193,6 @@ def _mark(css_class: str, shape: str, x: float, y: float, r: float, title: str) 
         d = "M" + "L".join(f"{x + dx * r:.1f} {y + dy * r:.1f}" for dx, dy in _FILLED[shape]) + "Z"
     else:
         d = "".join(
-            f"M{x + a[0] * r:.1f} {y + a[1] * r:.1f}L{x + b[0] * r:.1f} {y + b[1] * r:.1f}"
-            for a, b in _STROKES[shape]
+            f"M{x + a[0] * r:.1f} {y + a[1] * r:.1f}L{x + b[0] * r:.1f} {y + b[1] * r:.1f}" for a, b in _STROKES[shape]
         )
     return f'<path class="{css_class}" d="{d}">{inner}</path>'
