@@ -9,10 +9,8 @@ import numpy as np
 from erfa import ufunc as _erfa
 from numpy.typing import NDArray
 
-from firstarc.constants import AU_KM, C_KM_S, EARTH_RADIUS_KM
+from firstarc.constants import AU_KM, C_KM_S, EARTH_RADIUS_KM, EARTH_ROTATION_RAD_S
 
-#: Rotation rate of the Earth, rad/s (IERS Conventions 2010, TN 36, table 1.2).
-EARTH_ROTATION_RAD_S = 7.292115e-5
 _WGS84 = 1
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
-from typing import Any, cast
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -121,8 +121,7 @@ def motion_of(model: ForceModel, names: tuple[str, ...]) -> Motion:
     """What the fit integrates."""
     if model.two_body:
         return TwoBody(model.gm_km3_s2)
-    # integrated arcs give their partials in a tuple of their own; its fields are those the protocol asks for
-    return cast(Motion, Perturbed(model, names))
+    return Perturbed(model, names)
 
 
 def measurements_of(obs: Observations) -> Measurements:

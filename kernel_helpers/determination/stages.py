@@ -230,9 +230,9 @@ class Candidate(Result):
         lines.append(self.stage_table())
         if self.converged.state is not None:
             others = (
-                "no other observations"
+                "No other observations"
                 if self.dof_others == 0
-                else f"rms of the other observations {significant(self.rms_others_arcsec, 3)}″"
+                else f"Rms of the other observations {significant(self.rms_others_arcsec, 3)}″"
             )
             lines.append(f"{self.converged.status} {others}.")
         return lines

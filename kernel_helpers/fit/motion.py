@@ -3,27 +3,15 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any, NamedTuple, Protocol
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
+from firstarc.dynamics.trajectory import StatesAndPartials
 from firstarc.twobody.kepler import propagate, propagate_with_partials
 
 Array = NDArray[Any]
-
-
-class MotionPartials(NamedTuple):
-    """States at n times and their partials.
-
-    ``r_km``, ``v_km_s`` (n, 3); ``by_state`` (n, 6, 6) partials of (r, v) by the state at its own epoch;
-    ``by_parameters`` (n, 6, p) partials by the motion's own parameters.
-    """
-
-    r_km: Array
-    v_km_s: Array
-    by_state: Array
-    by_parameters: Array
 
 
 class Arc(Protocol):
@@ -32,7 +20,7 @@ class Arc(Protocol):
     def at(self, t_s: Array) -> tuple[Array, Array]:
         """Positions (n, 3) km and velocities (n, 3) km/s."""
 
-    def with_partials(self, t_s: Array) -> MotionPartials:
+    def with_partials(self, t_s: Array) -> StatesAndPartials:
         """The same with partials."""
 
 
@@ -69,9 +57,9 @@ class TwoBodyArc:
     def at(self, t_s: Array) -> tuple[Array, Array]:
         return propagate(self.state[:3], self.state[3:], t_s - self.t_state_s, self.gm_km3_s2)
 
-    def with_partials(self, t_s: Array) -> MotionPartials:
+    def with_partials(self, t_s: Array) -> StatesAndPartials:
         r, v, stm = propagate_with_partials(self.state[:3], self.state[3:], t_s - self.t_state_s, self.gm_km3_s2)
-        return MotionPartials(r, v, stm, np.empty((len(r), 6, 0)))
+        return StatesAndPartials(r, v, stm, np.empty((len(r), 6, 0)))
 
 
 @dataclass(frozen=True)

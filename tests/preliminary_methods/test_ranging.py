@@ -26,6 +26,7 @@ def sampled(arc, **more):
     return sample(*arc.given, body_radius_km=radius, **arc.more, **more)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("kind", KINDS)
 def test_the_truth_lies_in_the_95_percent_range(kind):
     n, inside = 100, 0
