@@ -3,7 +3,7 @@
 Minimises \\|r(x)\\|^2 for residuals r that are already divided by their sigmas. Each step solves
 min \\|r + J p\\| subject to \\|p / scale\\| <= region by the singular values of J scale; inside the region it is
 the Gauss-Newton step. Region and damping after Moré 1978, "The Levenberg-Marquardt algorithm: implementation
-and theory", Lecture Notes in Mathematics 630, 105 (recalled).
+and theory", Springer LNM 630, 105 (recalled).
 
 It stops when what is left to gain is nothing: the relative offset of Bates and Watts 1981 (Technometrics 23,
 179), that is the length of the residuals' projection on the tangent space per parameter, in sigmas; Milani and
