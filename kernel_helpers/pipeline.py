@@ -7,7 +7,8 @@ its stages; the results get their units, their ranking against the other observa
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+import operator
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -90,7 +91,7 @@ def preliminary(
     """
     if not isinstance(obs, Observations):
         raise UsageError(f"obs must be Observations from firstarc.load, got {type(obs).__name__}")
-    if method not in METHODS:
+    if not isinstance(method, str) or method not in METHODS:
         raise UsageError(f"method must be one of {', '.join(map(repr, METHODS))}, got {method!r}")
     if eccentricity is not None and method != "assumed-eccentricity":
         raise UsageError(f'eccentricity belongs to method="assumed-eccentricity", not to {method!r}')
@@ -321,8 +322,8 @@ def default_pick(obs: Observations) -> tuple[tuple[int, int, int], str]:
 
 def _checked_pick(pick: Sequence[int], obs: Observations) -> tuple[int, int, int]:
     try:
-        rows = [int(index) for index in pick]
-    except (TypeError, ValueError):
+        rows = [operator.index(index) for index in pick if not isinstance(index, bool)]
+    except TypeError:
         rows = []
     if len(rows) != 3 or len(set(rows)) != 3 or not all(0 <= row < len(obs) for row in rows):
         raise UsageError(f"pick must be three different positions from 0 to {len(obs) - 1}, got {pick!r}")
@@ -346,8 +347,9 @@ def fit(
     ----------
     obs : Observations
     start : Candidate, State, Preliminary or None
-        Where to begin. A preliminary result gives all its admissible candidates; None makes one, by the automatic
-        choice of methods. The epoch of the fit is that of the (first) start.
+        Where to begin. A preliminary result gives all its admissible candidates; None makes one by Gauss' method, and
+        by the automatic choice of methods where that leaves the range open. The epoch of the fit is that of the
+        (first) start.
     forces : None, "two-body" or "full"
         None takes the terms that move the object noticeably over the arc, and says so in ``forces_reason``. "full" is
         the zonals to J4, Sun and Moon about the Earth, or the planets, the Moon and the Sun's relativistic term.
@@ -378,25 +380,45 @@ def fit(
     """
     if not isinstance(obs, Observations):
         raise UsageError(f"obs must be Observations from firstarc.load, got {type(obs).__name__}")
+    if area_to_mass_m2_kg is not None and not (
+        isinstance(area_to_mass_m2_kg, int | float) and 0.0 <= area_to_mass_m2_kg < math.inf
+    ):
+        raise UsageError(f"area_to_mass_m2_kg must be a number from 0 on (m2/kg), got {area_to_mass_m2_kg!r}")
+    if not isinstance(reject, bool):
+        raise UsageError(f"reject must be True or False, got {reject!r}")
+    if isinstance(estimate, str) or not isinstance(estimate, Iterable):
+        raise UsageError(f'estimate must be a list such as ["clock:CODE"], got {estimate!r}')
+    lists = {"keep": _positions("keep", keep), "leave_out": _positions("leave_out", leave_out)}
     if forces is not None and forces not in FORCES:
         raise UsageError(f"forces must be None, {' or '.join(map(repr, FORCES))}, got {forces!r}")
     if len(obs) < 3:
         raise UsageError(f"a fit needs three observations, got {len(obs)}")
-    states, words = _starts(obs, start)
+    states, words, rivals = _starts(obs, start)
     wanted = Forces(forces, area_to_mass_m2_kg, "area-to-mass" in estimate)
-    return make_fit(obs, states, words, wanted, reject, tuple(estimate), tuple(keep), tuple(leave_out))
+    return make_fit(obs, states, words, wanted, reject, tuple(estimate), lists["keep"], lists["leave_out"], rivals)
 
 
-def _starts(obs: Observations, start: Any) -> tuple[list[State], str]:
-    """States to begin from, and what they are in words."""
+def _positions(name: str, given: Any) -> tuple[int, ...]:
+    try:
+        return tuple(operator.index(row) for row in given)
+    except TypeError:
+        raise UsageError(f"{name} must be a list of positions in obs, got {given!r}") from None
+
+
+def _starts(obs: Observations, start: Any) -> tuple[list[State], str, list[State]]:
+    """States to begin from, what they are in words, and other orbits that may fit as well."""
     if isinstance(start, State):
         if start.center != obs.center:
             raise UsageError(f"start is about the {start.center}, the observations about the {obs.center}")
-        return [start], "a state given by the caller"
+        return [start], "a state given by the caller", _rivals(obs, None)
     if isinstance(start, Candidate):
         if start.state is None:
             raise UsageError(f"candidate {start.letter} has no converged orbit to start from: {start.reason}")
-        return [start.state], f"candidate {start.letter} ({METHODS[start.method].label})"
+        words = f"candidate {start.letter} ({METHODS[start.method].label})"
+        positions = {int(row): position for position, row in enumerate(obs.rows)}
+        pick = [positions.get(int(start.rows[position])) for position in start.picked]
+        whole = len(pick) == 3 and None not in pick
+        return [start.state], words, _rivals(obs, [int(i) for i in pick if i is not None] if whole else None)
     if start is None:
         start = preliminary(obs)
         if start.best is None or start.best.sigma_range_km > abs(start.best.ranges_km[1]):
@@ -409,7 +431,12 @@ def _starts(obs: Observations, start: Any) -> tuple[list[State], str]:
             f"no admissible preliminary orbit to start from: {start.status} Give start= a State, or other observations."
         )
     letters = ", ".join(c.letter for c in good)
-    return [c.state for c in good if c.state is not None], f"every admissible candidate ({letters})"
+    return [c.state for c in good if c.state is not None], f"every admissible candidate ({letters})", []
+
+
+def _rivals(obs: Observations, pick: Sequence[int] | None) -> list[State]:
+    """Admissible orbits of Gauss' method: a fit from one start must not overlook that another fits as well."""
+    return [c.state for c in preliminary(obs, pick=pick).candidates if c.admissible and c.state is not None]
 
 
 def residuals_of(state: State, obs: Observations) -> Array:

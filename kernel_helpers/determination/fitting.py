@@ -16,7 +16,7 @@ from ..dynamics.decision import decide
 from ..dynamics.force_models import ForceModel, RadiationPressure, full, two_body
 from ..dynamics.trajectory import Perturbed
 from ..errors import UsageError
-from ..fit.fitted import LeastSquares
+from ..fit.fitted import LeastSquares, OtherMinimum
 from ..fit.measurement_model import MeasurementModel
 from ..fit.measurements import Measurements
 from ..fit.motion import Motion, TwoBody
@@ -26,6 +26,7 @@ from ..fit.rejection import RejectionRule, manual_choice
 from ..fit.verdicts import WEAKEST_PART, verdicts, weakest_part
 from ..fit.weighting import same_night_factors
 from ..observing.observations import Observations
+from ..results import Code
 from .orbit_fit import Estimate, OrbitFit
 from .state import GM_KM3_S2, State
 
@@ -191,39 +192,59 @@ def make_fit(
     estimate: Sequence[str],
     keep: Sequence[int],
     leave_out: Sequence[int],
+    rivals: Sequence[State] = (),
 ) -> OrbitFit:
-    """Fit all observations from every start; the epoch is that of the first."""
+    """Fit all observations from every start; the epoch is that of the first.
+
+    ``rivals`` are orbits that were not asked for but might fit as well: they only serve the verdict on other minima.
+    """
     gm = GM_KM3_S2[obs.center]
     lines = obs.sight_lines
     epoch = starts[0].epoch_tdb
     times = np.array([_seconds(state.epoch_tdb, lines.epoch_tdb) for state in starts])
     plain = np.stack([np.concatenate([state.r_km, state.v_km_s]) for state in starts])
     parameters, names = parameters_of(obs, estimate)
-    model = forces.model(obs, plain[0], float(times[0]))
-    force_names = forces.estimated
+    t_state_s = float(times[0])
     measured = measurements_of(obs)
-    real = MeasurementModel(measured, motion_of(model, force_names), float(times[0]), parameters)
-    cheap = None
-    if not model.two_body and not force_names:
-        cheap = MeasurementModel(measured, TwoBody(gm), float(times[0]), parameters)
-        if forces.asked is None and not forces.wants_radiation:
-            trial = fit_orbit(cheap, plain, times, manual_choice(len(obs), keep, leave_out))
-            part = weakest_part(trial)
-            # about the Sun a near object's state is dominated by the observer's own: three looks tell nothing more
-            if part > WEAKEST_PART or (obs.center == "sun" and trial.dof < 1):
-                model, real, cheap = replace(two_body(obs.center), reason=_open(part)), cheap, None
-    found = fit_orbit(
-        real,
-        plain,
-        times,
-        manual_choice(len(obs), keep, leave_out),
-        RejectionRule() if reject else None,
-        approach=cheap,
-    )
-    judge = cheap if cheap is not None and _same_partials(found, cheap) else real
+    manual = manual_choice(len(obs), keep, leave_out)
+    rule = RejectionRule() if reject else None
+    cheap = MeasurementModel(measured, TwoBody(gm), t_state_s, parameters)
+    found: LeastSquares | None = None
+    decided = forces.asked is None and not forces.wants_radiation
+    if decided:
+        # what perturbs an object depends on where it is: the two-body fit says that better than a start
+        trial = fit_orbit(cheap, plain, times, manual)
+        part = weakest_part(trial)
+        # about the Sun a near object's state is dominated by the observer's own: three looks tell nothing more
+        if part > WEAKEST_PART or (obs.center == "sun" and trial.dof < 1):
+            model = replace(two_body(obs.center), reason=_open(part))
+        else:
+            model = forces.model(obs, trial.state, t_state_s)
+    else:
+        model = forces.model(obs, plain[0], t_state_s)
+    for _ in range(DECISIONS):
+        real = cheap if model.two_body else MeasurementModel(
+            measured, motion_of(model, forces.estimated), t_state_s, parameters
+        )  # fmt: skip
+        approach = None if model.two_body or forces.estimated else cheap
+        found = fit_orbit(real, plain, times, manual, rule, approach=approach)
+        if not decided or model.reason.startswith(_OPEN):
+            break
+        again = forces.model(obs, found.state, t_state_s)
+        if again.sentence == model.sentence:
+            model = again
+            break
+        model = again
+    assert found is not None  # the loop runs at least once
+    found = _with_rivals(found, cheap, rivals, lines.epoch_tdb)
+    if model.two_body or forces.estimated:
+        cheap = real
+    judge = cheap if cheap is real or _same_partials(found, cheap) else real
     return result_of(obs, found, judge, model, epoch, names, start_words, forces, tuple(estimate))
 
 
+#: Two minima whose states differ by less, as part of distance and speed, are one.
+SAME_STATE = 1e-4
 #: Two-body motion stands in for the real one when the fit's linearity is tested, if its partials agree this well.
 SAME_PARTIALS = 0.01
 
@@ -244,6 +265,32 @@ def _same_partials(found: LeastSquares, cheap: MeasurementModel) -> bool:
     axes = size[:, None] * vectors * np.sqrt(np.maximum(values, 0.0))
     away, reach = np.linalg.norm((design - fitted) @ axes, axis=0), np.linalg.norm(fitted @ axes, axis=0)
     return bool((away <= SAME_PARTIALS * reach).all())
+
+
+#: Times the forces are decided: on the two-body fit, then on what they themselves lead to.
+DECISIONS = 3
+
+
+def _with_rivals(
+    found: LeastSquares, cheap: MeasurementModel, rivals: Sequence[State], origin: tuple[float, float]
+) -> LeastSquares:
+    """The fit with the minima that other orbits lead to, compared under two-body motion."""
+    if not rivals:
+        return found
+    choice = np.where(found.used, 0, -1)
+    own = fit_orbit(cheap, found.state, found.t_state_s, choice)
+    plain = np.stack([np.concatenate([state.r_km, state.v_km_s]) for state in rivals])
+    times = np.array([_seconds(state.epoch_tdb, origin) for state in rivals])
+    best = fit_orbit(cheap, plain, times, choice)
+    minima = [OtherMinimum(best.state, best.parameters, best.chi2, best.status, -1), *best.others]
+    size = np.repeat([np.linalg.norm(own.state[:3]), np.linalg.norm(own.state[3:])], 3)
+    known = [own.state, *(one.state for one in found.others)]
+    others = list(found.others)
+    for one in minima:
+        apart = all(np.abs((one.state - state) / size).max() > SAME_STATE for state in known)
+        if apart and (one.status.ok or one.status.code is Code.CONSTRAINED):
+            others.append(replace(one, chi2=found.first_chi2 + one.chi2 - own.chi2))
+    return replace(found, others=tuple(sorted(others, key=lambda one: one.chi2)))
 
 
 def _open(part: float) -> str:

@@ -196,6 +196,7 @@ class Observations(Shown):
         if not self.what_if:
             return site
         lon, lat, height = self._places[0][i]
+        lon = (lon + 180.0) % 360.0 - 180.0 if abs(lon) > 360.0 else lon
         return replace(site, lon_deg=float(lon), lat_deg=float(lat), height_m=float(height))
 
     def utc_iso(self, i: int, decimals: int = 3) -> str:

@@ -70,7 +70,9 @@ def test_text_and_html_have_the_same_words(name: str) -> None:
     centre = "Earth" if fit.center == "earth" else "Sun"
     verdict = "Determined." if fit.determined else "Not determined."
     assert fit.report().startswith(f"Least-squares orbit about the {centre}. {verdict}")
-    for words in (fit.forces, fit.forces_reason, fit.verdicts.sentence, fit.status.sentence):
+    # How many steps it took may differ by one between versions of the linear algebra: a converged fit says only so.
+    ending = "Converged." if fit.status.ok else fit.status.sentence
+    for words in (fit.forces, fit.forces_reason, fit.verdicts.sentence, ending):
         assert words in fit.report()
 
 

@@ -84,7 +84,7 @@ def test_satellites_with_the_forces_that_their_arc_needs(name: str) -> None:
 def test_two_nights_of_a_synchronous_satellite_are_no_two_body_orbit() -> None:
     """Over a day J2 and the Moon move it by tens of arcsec: residuals say so when they are left out."""
     fit = fa.fit(loaded("sh-geo-2nights", "s1"), forces="two-body")
-    assert not fit.verdicts.consistent and "larger than the stated sigmas" in fit.verdicts.sentence
+    assert not fit.verdicts.consistent and "larger than the stated sigmas" in fit.verdicts.consistent.sentence
     assert fit.forces_reason == "Asked for by the caller."
 
 
