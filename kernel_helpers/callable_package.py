@@ -27,6 +27,9 @@ class CallablePackage(ModuleType):
     def __call__(self, *args: Any, **kwargs: Any) -> Any:
         return self._target(*args, **kwargs)
 
+    def __reduce_ex__(self, protocol: Any) -> Any:
+        return import_module, (self.__name__,)
+
     @property
     def __signature__(self) -> inspect.Signature:
         return inspect.signature(self._target)
@@ -43,7 +46,8 @@ def make_callable(package: str, home: str, function: str) -> None:
 
     def shown_doc(self: CallablePackage) -> str | None:
         try:
-            return self._target.__doc__ or own_doc
+            target = self._target
+            return f"{target.__name__}{inspect.signature(target)}\n\n{target.__doc__}" if target.__doc__ else own_doc
         except ImportError:
             return own_doc
 

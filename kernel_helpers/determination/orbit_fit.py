@@ -22,7 +22,7 @@ from ..results import Code, Result, Status
 from ..uncertainty.covariance import ElementSigmas, element_sigmas
 from .elements import Elements, reference_axes
 from .preliminary import sample_lines
-from .stages import element_rows, sigma_rows
+from .stages import element_rows, row_name, sigma_rows
 from .state import State
 
 
@@ -235,11 +235,13 @@ class OrbitFit(Result):
     def report_lines(self) -> list[Any]:
         count, inside = len(self.used), int(self.used.sum())
         verdict = "Determined." if self.determined else "Not determined."
+        rms = significant(self.rms_arcsec, 2) if self.rms_arcsec >= 1e-3 else scientific(self.rms_arcsec, 1)
+        ending = "Converged." if self.status.ok else str(self.status)
         lines: list[Any] = [
             f"Least-squares orbit about the {'Earth' if self.center == 'earth' else 'Sun'}. {verdict} "
             f"{self.verdicts.sentence}",
-            f"{inside} of {count} observations in the fit, rms {significant(self.rms_arcsec, 2)}″, "
-            f"chi-square {chi2_text(self.chi2)} for {self.dof} degrees of freedom. {self.status}",
+            f"{inside} of {count} observations in the fit, rms {rms}″, chi-square {chi2_text(self.chi2)} "
+            f"for {self.dof} degrees of freedom. {ending}",
             f"Forces: {self.forces} {self.forces_reason}".strip(),
         ]
         lines.append(self.element_table())
@@ -263,13 +265,13 @@ class OrbitFit(Result):
                 continue
             s = sigma.get(name)
             if s is None or not math.isfinite(s) or s <= 0.0:
-                table.append([name, significant(value, 3), "", unit])
+                table.append([row_name(name, self.state), significant(value, 3), "", unit])
             else:
                 places = sigma_decimals(s)
-                table.append([name, fixed(value, places), fixed(s, places), unit])
+                table.append([row_name(name, self.state), fixed(value, places), fixed(s, places), unit])
         return table
 
 
 def chi2_text(value: float) -> str:
     """A chi-square to three digits."""
-    return significant(value, 3) if value < 1e6 else scientific(value)
+    return significant(value, 3) if 1e-3 <= value < 1e6 else scientific(value)

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from ..constants import AU_KM
+from ..constants import AU_KM, EARTH_RADIUS_KM
 from ..errors import UsageError
 from ..preliminary.methods import METHODS
 from ..report.rounding import DASH, fixed, scientific, significant, with_sigma
@@ -132,7 +132,10 @@ def sample_lines(sample: Any, center: str) -> list[Any]:
     summary = sample.summary(reference_axes(center))
     unit, scale = ("km", 1.0) if center == "earth" else ("au", AU_KM)
     names = [("a", "a_km", unit, scale), ("e", "e", "", 1.0), ("i", "i_rad", "°", math.pi / 180.0)]
-    names += [("q", "q_km", unit, scale), ("slant range", "range_km", unit, scale)]
+    names += [("q" if center == "sun" else "perigee height", "q_km", unit, scale)]
+    names += [("slant range", "range_km", unit, scale)]
+    if center == "earth":
+        summary = {**summary, "q_km": summary["q_km"] - EARTH_RADIUS_KM}
     rows = [["of the sample", "5 %", "50 %", "95 %", "unit"]]
     for name, key, word, size in names:
         rows.append([name, *(significant(float(x) / size, 3) for x in summary[key]), word])

@@ -249,8 +249,13 @@ class Candidate(Result):
             cells = [fixed_or_dash(column, name, sigma.get(name)) for column in columns[:2]]
             last = columns[2]
             cells.append(with_sigma(last[name][0], sigma.get(name)) if last else DASH)
-            table.append([name, *cells, unit])
+            table.append([row_name(name, self.converged.state or self.gauss.state), *cells, unit])
         return table
+
+
+def row_name(key: str, state: State | None) -> str:
+    """Name of an element row for people: about the Earth the periapsis is given as its height."""
+    return "perigee height" if key == "q" and state is not None and state.center == "earth" else key
 
 
 def fixed_or_dash(column: dict[str, tuple[float, str]], name: str, sigma: float | None) -> str:

@@ -272,5 +272,6 @@ def _single(fit: LeastSquares) -> Verdict:
         gap,
         RIVAL_CHI2,
         gap / RIVAL_CHI2 - 1.0,
-        f"Another minimum lies {gap:.1f} higher in chi-square (limit {RIVAL_CHI2:.1f}): {word}.",
+        f"Another minimum lies {abs(gap):.1f} {'lower' if gap < 0.0 else 'higher'} in chi-square "
+        f"(limit {RIVAL_CHI2:.1f}): {word}.",
     )

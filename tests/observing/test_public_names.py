@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import inspect
+import pickle
 import subprocess
 import sys
 
@@ -28,11 +29,16 @@ def test_all_names_are_there() -> None:
 
 
 def test_preliminary_is_package_and_function() -> None:
-    from firstarc.pipeline import preliminary
+    from firstarc import pipeline
 
-    assert inspect.signature(fa.preliminary) == inspect.signature(preliminary)
-    assert fa.preliminary.__doc__ == preliminary.__doc__
-    assert inspect.ismodule(fa.preliminary)
+    for name in ("preliminary", "fit"):
+        package, function = getattr(fa, name), getattr(pipeline, name)
+        assert inspect.signature(package) == inspect.signature(function)
+        # ``?`` in a notebook shows no signature for a module, so the text opens with it.
+        assert package.__doc__.startswith(f"{name}(")
+        assert package.__doc__.endswith(function.__doc__)
+        assert inspect.ismodule(package)
+        assert pickle.loads(pickle.dumps(package)) is package
 
 
 CALL = """
