@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import operator
 import traceback
 from collections.abc import Sequence
 from dataclasses import replace
@@ -69,8 +70,8 @@ class Desk(Scene):
     what_if = traitlets.Any(())
     candidate = traitlets.Unicode(None, allow_none=True)
     method = traitlets.Unicode("gauss")
-    preliminary = traitlets.Any(None)
-    fit = traitlets.Any(None)
+    preliminary = traitlets.Any(None, read_only=True)
+    fit = traitlets.Any(None, read_only=True)
 
     def __init__(
         self,
@@ -94,6 +95,7 @@ class Desk(Scene):
             raise UsageError("give the Desk the recorded observations (obs.recorded); it sets what-ifs itself")
         if len(obs) < 3:
             raise UsageError(f"a preliminary orbit needs three observations, got {len(obs)}")
+        self._ready = False
         super().__init__(**given)
         self.obs = obs
         self._solver = Solver(obs)
@@ -102,6 +104,7 @@ class Desk(Scene):
         chosen = checked_pick(pick, len(obs)) if pick is not None else default_pick(obs)[0]
         self._in_force = Settings(pick=chosen, station=obs.station_of(chosen[1]).code, row=chosen[1])
         self._snapshot: Snapshot
+        self._ready = True
         self._solve()
         self.observe(self._from_browser, "settings")
         self.observe(self._from_python, ["pick", "excluded", "what_if", "candidate", "method"])
@@ -135,33 +138,58 @@ class Desk(Scene):
         self._in_force = checked(change["new"], self._in_force, len(self.obs), stations)
         self._solve()
 
+    # Values are brought to one form before anybody is told of them, so that linked Desks agree; a value that cannot
+    # be used is refused before it is set.
+
+    @traitlets.validate("pick")
+    def _valid_pick(self, proposal: Any) -> Any:
+        return checked_pick(proposal["value"], len(self.obs)) if self._ready else proposal["value"]
+
+    @traitlets.validate("excluded")
+    def _valid_excluded(self, proposal: Any) -> Any:
+        if not self._ready:
+            return proposal["value"]
+        pick = self._in_force.pick
+        return tuple(row for row in checked_rows(proposal["value"], len(self.obs)) if row not in pick)
+
+    @traitlets.validate("what_if")
+    def _valid_what_if(self, proposal: Any) -> Any:
+        if not self._ready:
+            return proposal["value"]
+        offsets, row_clock = sliders_of(proposal["value"], self.obs)
+        return what_ifs_of(replace(self._in_force, offsets=offsets, row_clock=row_clock), self.obs)
+
+    @traitlets.validate("candidate")
+    def _valid_candidate(self, proposal: Any) -> Any:
+        letter = proposal["value"]
+        if self._ready and not self._busy and letter is not None and self.preliminary is not None:
+            self.preliminary.candidate(letter)
+        return letter
+
+    @traitlets.validate("method")
+    def _valid_method(self, proposal: Any) -> Any:
+        if proposal["value"] not in METHODS:
+            raise UsageError(f"method must be one of {', '.join(map(repr, METHODS))}, got {proposal['value']!r}")
+        return proposal["value"]
+
     def _from_python(self, change: Any) -> None:
         if self._busy:
             return
-        try:
-            self._in_force = self._with_trait(change["name"], change["new"])
-        except Exception:
-            # a refused value must not stay on the trait as if it were in force
+        name, value = change["name"], change["new"]
+        if value is None and name in ("pick", "excluded", "what_if"):
+            # traitlets lets None pass unseen
             self._busy = True
-            setattr(self, change["name"], change["old"])
+            setattr(self, name, change["old"])
             self._busy = False
-            raise
+            raise UsageError(f"expected positions of observations or what-ifs for {name}, got None")
+        if name == "what_if":
+            offsets, row_clock = sliders_of(value, self.obs)
+            self._in_force = replace(self._in_force, offsets=offsets, row_clock=row_clock)
+        elif name == "method":
+            self._in_force = replace(self._in_force, method=value, candidate=None)
+        else:
+            self._in_force = replace(self._in_force, **{name: value})
         self._solve()
-
-    def _with_trait(self, name: str, value: Any) -> Settings:
-        count = len(self.obs)
-        if name == "pick":
-            return replace(self._in_force, pick=checked_pick(value, count))
-        if name == "excluded":
-            return replace(self._in_force, excluded=checked_rows(value, count))
-        if name == "candidate":
-            return replace(self._in_force, candidate=value)
-        if name == "method":
-            if value not in METHODS:
-                raise UsageError(f"method must be one of {', '.join(map(repr, METHODS))}, got {value!r}")
-            return replace(self._in_force, method=value, candidate=None)
-        offsets, row_clock = sliders_of(value, self.obs)
-        return replace(self._in_force, offsets=offsets, row_clock=row_clock)
 
     def _solve(self) -> None:
         settings = self._in_force
@@ -184,8 +212,8 @@ class Desk(Scene):
                 self.what_if = self._snapshot.what_if
                 self.candidate = settings.candidate
                 self.method = settings.method
-                self.preliminary = self._snapshot.preliminary
-                self.fit = self._snapshot.fit
+                self.set_trait("preliminary", self._snapshot.preliminary)
+                self.set_trait("fit", self._snapshot.fit)
         finally:
             self._busy = False
         self.show(scene, frame)
@@ -245,12 +273,24 @@ def checked_pick(value: Any, count: int) -> tuple[int, int, int]:
 
 def checked_rows(value: Any, count: int) -> tuple[int, ...]:
     try:
-        rows = tuple(sorted({int(row) for row in value}))
-    except (TypeError, ValueError):
+        rows = tuple(sorted({operator.index(row) for row in value}))
+    except TypeError:
         raise UsageError(f"expected positions of observations, got {value!r}") from None
     if rows and not 0 <= rows[0] <= rows[-1] < count:
         raise UsageError(f"positions run from 0 to {count - 1}, got {value!r}")
     return rows
+
+
+def what_ifs_given(what_if: Any) -> tuple[WhatIf, ...]:
+    """What-ifs as a tuple, whether one, several or none were given."""
+    ones = (what_if,) if isinstance(what_if, WhatIf) else what_if or ()
+    try:
+        found = tuple(ones)
+    except TypeError:
+        found = (ones,)
+    if not all(isinstance(one, WhatIf) for one in found):
+        raise UsageError(f"what_if must be fa.WhatIf(...) or several of them, got {what_if!r}")
+    return found
 
 
 def sliders_of(what_if: Any, obs: Any) -> tuple[dict[str, dict[str, float]], dict[int, float]]:
@@ -261,7 +301,7 @@ def sliders_of(what_if: Any, obs: Any) -> tuple[dict[str, dict[str, float]], dic
     UsageError
         A what-if moves the station of single rows, which no slider can show.
     """
-    ones: Sequence[WhatIf] = (what_if,) if isinstance(what_if, WhatIf) else tuple(what_if or ())
+    ones = what_ifs_given(what_if)
     codes = [site.code for site in obs.stations]
     positions = {int(row): position for position, row in enumerate(obs.rows)}
     offsets: dict[str, dict[str, float]] = {}
