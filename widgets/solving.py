@@ -242,5 +242,8 @@ def reason_of_failure(obs: Any, pick: tuple[int, int, int], pre: Preliminary | N
         Code.NO_POSITIVE_ROOT: "check times and station of the pick, or put other sightings into it",
         Code.BAD_INPUT: "put three sightings of different times into the pick",
     }
-    remedy = remedies.get(code, "put other sightings into the pick; each root below keeps its reason")
+    other = "put other sightings into the pick; each root below keeps its reason"
+    if pre.method != "gauss":
+        other = "choose another method, or put other sightings into the pick; each root below keeps its reason"
+    remedy = remedies.get(code, other)
     return Failure(sentence(pre.status.sentence), remedy)

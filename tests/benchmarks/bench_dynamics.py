@@ -36,7 +36,7 @@ def best_of(count: int, call: Callable[[], object]) -> float:
     return min(times)
 
 
-def main() -> None:
+def report() -> list[str]:
     pole = planets.earth_pole(EPOCH)
     light, drag = RadiationPressure(0.02, 1.3), Drag(0.022)
     cases = (
@@ -44,7 +44,10 @@ def main() -> None:
         ("low orbit, one day", "earth", LOW, DAY, None, None),
         ("the same with light, shadow, drag", "earth", LOW, DAY, light, drag),
     )
-    print(f"{'':34} {'with partials':>14} {'DOP853, state only':>19} {'ratio':>7} {'difference':>12}")
+    lines = [
+        "| full forces | with partials s | DOP853, state only s | ratio | difference mm |",
+        "|---|---:|---:|---:|---:|",
+    ]
     for name, center, state, span, pressure, air in cases:
         model = full(center, planets.tracks(center, EPOCH, (0.0, span)), pole, "", pressure, air)
         t = np.linspace(0.0, span, 200)
@@ -52,8 +55,9 @@ def main() -> None:
         reference = best_of(1, lambda m=model, s=state, t=t: integrated(m, s, 0.0, t[-1]))
         off = Trajectory(model, state).at([span])[0][0] - integrated(model, state, 0.0, span)[:3]
         size = 1e6 * np.linalg.norm(off)
-        print(f"{name:34} {ours:12.3f} s {reference:17.3f} s {reference / ours:7.1f} {size:9.3g} mm")
+        lines.append(f"| {name} | {ours:.3f} | {reference:.3f} | {reference / ours:.1f} | {size:.2g} |")
+    return lines
 
 
 if __name__ == "__main__":
-    main()
+    print("\n".join(report()))

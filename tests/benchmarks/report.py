@@ -15,12 +15,14 @@ from pathlib import Path
 
 sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 
-from benchmarks import bench_import, bench_slider, bench_triples
+from benchmarks import bench_dynamics, bench_fit, bench_import, bench_slider, bench_triples
 
 PARTS: list[tuple[str, Callable[[], list[str]]]] = [
     ("Starting", bench_import.report),
     ("Slider to picture", bench_slider.report),
     ("Three-observation orbits", bench_triples.report),
+    ("Least-squares fit", bench_fit.report),
+    ("Trajectories", bench_dynamics.report),
 ]
 
 
