@@ -340,6 +340,7 @@ def fit(
     keep: Sequence[int] = (),
     leave_out: Sequence[int] = (),
     area_to_mass_m2_kg: float | None = None,
+    ballistic_m2_kg: float | None = None,
 ) -> OrbitFit:
     """The weighted least-squares orbit over all observations.
 
@@ -357,11 +358,14 @@ def fit(
         Automatic rejection and recovery of outliers (Carpino, Milani and Chesley 2003).
     estimate : sequence of str
         Further unknowns: ``"clock:CODE"`` (s to be added to the recorded times of a station), ``"station:CODE"``
-        (east, north, up of its place, m), ``"area-to-mass"`` (m2/kg, with solar radiation pressure).
+        (east, north, up of its place, m), ``"area-to-mass"`` (m2/kg, with solar radiation pressure), ``"ballistic"``
+        (C_D A / m, m2/kg, with drag).
     keep, leave_out : sequence of int
         Positions in ``obs`` that are always in or always out, whatever the automatic rejection finds.
     area_to_mass_m2_kg : float, optional
-        Solar radiation pressure with this area-to-mass ratio.
+        Solar radiation pressure with this area-to-mass ratio, or where its estimate begins.
+    ballistic_m2_kg : float, optional
+        Drag in a static atmosphere with this C_D A / m, or where its estimate begins; about the Earth only.
 
     Returns
     -------
@@ -380,10 +384,9 @@ def fit(
     """
     if not isinstance(obs, Observations):
         raise UsageError(f"obs must be Observations from firstarc.load, got {type(obs).__name__}")
-    if area_to_mass_m2_kg is not None and not (
-        isinstance(area_to_mass_m2_kg, int | float) and 0.0 <= area_to_mass_m2_kg < math.inf
-    ):
-        raise UsageError(f"area_to_mass_m2_kg must be a number from 0 on (m2/kg), got {area_to_mass_m2_kg!r}")
+    for name, value in (("area_to_mass_m2_kg", area_to_mass_m2_kg), ("ballistic_m2_kg", ballistic_m2_kg)):
+        if value is not None and not (isinstance(value, int | float) and 0.0 <= value < math.inf):
+            raise UsageError(f"{name} must be a number from 0 on (m2/kg), got {value!r}")
     if not isinstance(reject, bool):
         raise UsageError(f"reject must be True or False, got {reject!r}")
     if isinstance(estimate, str) or not isinstance(estimate, Iterable):
@@ -394,7 +397,9 @@ def fit(
     if len(obs) < 3:
         raise UsageError(f"a fit needs three observations, got {len(obs)}")
     states, words, rivals = _starts(obs, start)
-    wanted = Forces(forces, area_to_mass_m2_kg, "area-to-mass" in estimate)
+    unknown = {"area-to-mass": "area_to_mass_m2_kg", "ballistic": "ballistic_m2_kg"}
+    estimated = tuple(unknown[asked] for asked in estimate if asked in unknown)
+    wanted = Forces(forces, area_to_mass_m2_kg, ballistic_m2_kg, estimated)
     return make_fit(obs, states, words, wanted, reject, tuple(estimate), lists["keep"], lists["leave_out"], rivals)
 
 

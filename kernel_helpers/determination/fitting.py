@@ -13,7 +13,7 @@ from ..border import planets
 from ..border.solar_system import ephemeris
 from ..constants import ARCSEC_RAD, C_KM_S, DAY_S
 from ..dynamics.decision import decide
-from ..dynamics.force_models import ForceModel, RadiationPressure, full, two_body
+from ..dynamics.force_models import Drag, ForceModel, RadiationPressure, full, two_body
 from ..dynamics.trajectory import Perturbed
 from ..errors import UsageError
 from ..fit.fitted import LeastSquares, OtherMinimum
@@ -46,34 +46,43 @@ class Forces:
     ----------
     asked : None or str
         None decides by arc and orbit; ``"two-body"`` and ``"full"`` are taken at their word.
-    area_to_mass_m2_kg : float or None
-        With a number, solar radiation pressure acts.
-    estimate_area_to_mass : bool
+    area_to_mass_m2_kg, ballistic_m2_kg : float or None
+        With a number, solar radiation pressure or drag acts.
+    estimated : tuple of str
+        Those of the two that are unknowns of the fit; they act, too.
     """
 
     asked: str | None
     area_to_mass_m2_kg: float | None = None
-    estimate_area_to_mass: bool = False
+    ballistic_m2_kg: float | None = None
+    estimated: tuple[str, ...] = ()
 
     def model(self, obs: Observations, state: Array, t_state_s: float) -> ForceModel:
         """The force model for these observations."""
-        if self.asked == "two-body" and not self.wants_radiation:
+        if self.ballistic is not None and obs.center != "earth":
+            raise UsageError("drag acts on satellites of the Earth only; these observations are about the Sun")
+        if self.asked == "two-body":
+            if self.of_surface:
+                raise UsageError(
+                    'forces="two-body" leaves no room for radiation pressure or drag; give forces=None or forces="full"'
+                )
             return two_body(obs.center)
         lines = obs.sight_lines
         span = (min(float(lines.t_s.min()), t_state_s), max(float(lines.t_s.max()), t_state_s))
-        radiation = RadiationPressure(self.area_to_mass_m2_kg or 0.0) if self.wants_radiation else None
+        radiation = None if self.area_to_mass is None else RadiationPressure(self.area_to_mass)
+        drag = None if self.ballistic is None else Drag(self.ballistic)
         pole = planets.earth_pole((lines.epoch_tdb[0], lines.epoch_tdb[1] + t_state_s / DAY_S))
         try:
             tracks = planets.tracks(obs.center, lines.epoch_tdb, span)
         except UsageError as error:
-            if self.asked is None and not self.wants_radiation:
+            if self.asked is None and not self.of_surface:
                 # outside the ephemeris a decision is still possible; its reason says what is missing
                 return decide(obs.center, state, t_state_s, span, float(lines.sigma_rad.min()), None, pole=pole)
             raise UsageError(f"these forces need the planetary ephemeris: {error}") from error
         source = ephemeris().name
         itself = body_seen(obs, tracks)
-        if self.asked == "full" or self.wants_radiation:
-            model = full(obs.center, tracks, pole, source, radiation, itself=itself)
+        if self.asked == "full" or self.of_surface:
+            model = full(obs.center, tracks, pole, source, radiation, drag, itself=itself)
             reason = self.reason
         else:
             sigma = float(lines.sigma_rad.min())
@@ -84,13 +93,23 @@ class Forces:
         return replace(model, reason=reason.strip())
 
     @property
-    def wants_radiation(self) -> bool:
-        return self.area_to_mass_m2_kg is not None or self.estimate_area_to_mass
+    def area_to_mass(self) -> float | None:
+        """Where radiation pressure begins; None without it."""
+        return (
+            0.0
+            if self.area_to_mass_m2_kg is None and "area_to_mass_m2_kg" in self.estimated
+            else self.area_to_mass_m2_kg
+        )
 
     @property
-    def estimated(self) -> tuple[str, ...]:
-        """The motion's parameters that are unknowns of the fit."""
-        return ("area_to_mass_m2_kg",) if self.estimate_area_to_mass else ()
+    def ballistic(self) -> float | None:
+        """Where drag begins; None without it."""
+        return 0.0 if self.ballistic_m2_kg is None and "ballistic_m2_kg" in self.estimated else self.ballistic_m2_kg
+
+    @property
+    def of_surface(self) -> bool:
+        """Whether a force acts that depends on the object's own surface and mass."""
+        return self.area_to_mass is not None or self.ballistic is not None
 
     @property
     def reason(self) -> str:
@@ -160,7 +179,7 @@ def parameters_of(obs: Observations, estimate: Sequence[str]) -> tuple[list[Para
     """
     codes = [site.code for site in obs.records.sites]
     seeing = [code for index, code in enumerate(codes) if (obs.records.site_index == index).any()]
-    form = '"clock:CODE", "station:CODE" or "area-to-mass"'
+    form = '"clock:CODE", "station:CODE", "area-to-mass" or "ballistic"'
     parameters: list[Parameter] = []
     names: list[tuple[str, str, float]] = []
     for asked in estimate:
@@ -178,6 +197,9 @@ def parameters_of(obs: Observations, estimate: Sequence[str]) -> tuple[list[Para
         elif asked == "area-to-mass":
             parameters.append(ForceParameter("area_to_mass_m2_kg"))
             names.append(("area-to-mass", "m²/kg", 1.0))
+        elif asked == "ballistic":
+            parameters.append(ForceParameter("ballistic_m2_kg"))
+            names.append(("ballistic coefficient C_D A/m", "m²/kg", 1.0))
         else:
             raise UsageError(f"estimate holds {asked!r}; give {form}")
     return parameters, names
@@ -208,9 +230,11 @@ def make_fit(
     measured = measurements_of(obs)
     manual = manual_choice(len(obs), keep, leave_out)
     rule = RejectionRule() if reject else None
-    cheap = MeasurementModel(measured, TwoBody(gm), t_state_s, parameters)
+    # two-body motion knows no force that could be estimated
+    offsets = [one for one in parameters if not isinstance(one, ForceParameter)]
+    cheap = MeasurementModel(measured, TwoBody(gm), t_state_s, offsets)
     found: LeastSquares | None = None
-    decided = forces.asked is None and not forces.wants_radiation
+    decided = forces.asked is None and not forces.of_surface
     if decided:
         # what perturbs an object depends on where it is: the two-body fit says that better than a start
         trial = fit_orbit(cheap, plain, times, manual)

@@ -11,8 +11,13 @@ from astropy.time import Time
 from scipy.special import chdtri
 
 import firstarc as fa
-from pipeline.fit_scenes import normalised, orbit, seen
-from pipeline.shared_cases import invented, sightings_script
+from firstarc.border import planets
+from firstarc.constants import DAY_S
+from firstarc.dynamics.force_models import Drag, full
+from firstarc.dynamics.perturbed_directions import perturbed_directions
+from firstarc.dynamics.trajectory import Trajectory
+from pipeline.fit_scenes import noisy, normalised, orbit, seen, with_directions
+from pipeline.shared_cases import invented, loaded, sightings_script
 
 EPOCH = Time("2026-03-01T20:00:00", scale="utc")
 #: High enough for an hour above both stations, low enough for a clock to matter (some 40 arcsec a second).
@@ -82,6 +87,47 @@ def test_area_to_mass_is_an_unknown_of_the_forces() -> None:
     assert abs(light.value) < 4.0 * light.sigma and light.sigma > 0.0
     assert "solar radiation pressure" in fit.forces
     assert abs(clock.value - 0.25) < 3.5 * clock.sigma
+
+
+def under_drag(state: fa.State, sightings: list[tuple[str, str]], ballistic_m2_kg: float, seed: int) -> fa.Observations:
+    """Sightings (1 arcsec) of an orbit integrated with all forces and drag."""
+    blank = seen(state, sightings, 1.0)
+    lines = blank.sight_lines
+    plain = np.concatenate([state.r_km, state.v_km_s])
+    t_state_s = sum(a - b for a, b in zip(state.epoch_tdb, lines.epoch_tdb, strict=True)) * DAY_S
+    span = (min(t_state_s, lines.t_s.min()) - 60.0, max(t_state_s, lines.t_s.max()) + 60.0)
+    tracks = planets.tracks("earth", lines.epoch_tdb, span)
+    forces = full("earth", tracks, planets.earth_pole(lines.epoch_tdb), drag=Drag(ballistic_m2_kg))
+    path = Trajectory(forces, plain, t_state_s)
+    los, _, _ = perturbed_directions(path, lines.t_s, lines.observer_km, lines.center_velocity_km_s, True)
+    return with_directions(blank, noisy(los, np.full((len(blank), 2), 1.0), np.random.default_rng(seed)))
+
+
+def test_drag_is_modelled_when_given_and_found_when_asked_for() -> None:
+    """A low satellite over a day: without drag the fit is inconsistent, with it the orbit and C_D A / m come back."""
+    low = orbit("earth", EPOCH, 6800.0, 0.001, (51.0, 84.0, 10.0, 35.0))
+    times = [
+        ("QLN" if k % 2 else "BRN", f"2026-03-0{1 + k // 16}T{20 + k % 4:02d}:{3 * (k % 16):02d}:00") for k in range(32)
+    ]
+    obs = under_drag(low, times, 0.03, 3)
+    without = fa.fit(obs, start=low, reject=False)
+    assert not without.verdicts.consistent
+    assert "Drag is not included" in without.forces_reason and "give or estimate" in without.forces_reason
+    given = fa.fit(obs, start=low, ballistic_m2_kg=0.03)
+    assert "drag" in given.forces and given.verdicts.consistent and not given.estimates
+    free = fa.fit(obs, start=low, estimate=["ballistic"])
+    (drag,) = free.estimates
+    assert (drag.name, drag.unit) == ("ballistic coefficient C_D A/m", "m²/kg")
+    assert 0.0 < drag.sigma < 0.01 and abs(drag.value - 0.03) < 3.5 * drag.sigma
+    assert free.verdicts.consistent and free.dof == given.dof - 1
+    later = under_drag(low, [("BRN", f"2026-03-04T21:{m:02d}:00") for m in range(4)], 0.03, 4)
+    assert max(free.residuals_of(later)["chi"]) < 4.0
+
+
+def test_drag_is_for_the_earth_only() -> None:
+    comet = loaded("sh-comet-parabolic", "s1")
+    with pytest.raises(fa.UsageError, match="drag acts on satellites of the Earth only"):
+        fa.fit(comet, ballistic_m2_kg=0.01)
 
 
 def test_slow_clock_and_bad_sighting_of_the_notebook() -> None:
