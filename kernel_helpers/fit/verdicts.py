@@ -209,9 +209,10 @@ def nonlinearity(fit: LeastSquares, model: MeasurementModel, sigmas: float = LIN
     """
     if fit.covariance is None:
         return np.array([np.inf])
-    size = np.concatenate(
-        [np.repeat([np.linalg.norm(fit.state[:3]), np.linalg.norm(fit.state[3:])], 3), fit.parameter_sigmas]
-    )
+    place = np.repeat([np.linalg.norm(fit.state[:3]), np.linalg.norm(fit.state[3:])], 3)
+    # A parameter has no size of its own: its sigma counts like the state's worst, lest it drown the state's axes.
+    share = float((np.sqrt(np.diag(fit.covariance)[:6]) / place).max())
+    size = np.concatenate([place, fit.parameter_sigmas / share])
     values, vectors = np.linalg.eigh(fit.covariance / np.outer(size, size))
     prior, _ = model.prior_rows()
     design = np.concatenate([fit.design[fit.used].reshape(-1, size.size), prior])
@@ -226,7 +227,8 @@ def nonlinearity(fit: LeastSquares, model: MeasurementModel, sigmas: float = LIN
             moved = white_at(fit.x + way * axis)
             away = moved - base - way * linear[: base.size]
             reach = float(np.linalg.norm(linear))
-            part = float(np.linalg.norm(away)) / reach if reach > 0.0 else np.inf
+            # an axis shorter than the arithmetic resolves displaces nothing
+            part = float(np.linalg.norm(away)) / reach if axis.any() else 0.0
             out[k] = max(out[k], part if np.isfinite(part) else np.inf)
     return out
 

@@ -120,6 +120,8 @@ def test_drag_is_modelled_when_given_and_found_when_asked_for() -> None:
     assert (drag.name, drag.unit) == ("ballistic coefficient C_D A/m", "m²/kg")
     assert 0.0 < drag.sigma < 0.01 and abs(drag.value - 0.03) < 3.5 * drag.sigma
     assert free.verdicts.consistent and free.dof == given.dof - 1
+    assert given.determined and free.determined, free.verdicts
+    assert f"drag with {drag.value:.4g} m2/kg" in free.forces
     later = under_drag(low, [("BRN", f"2026-03-04T21:{m:02d}:00") for m in range(4)], 0.03, 4)
     assert max(free.residuals_of(later)["chi"]) < 4.0
 
