@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from .constants import ARCSEC_RAD, DAY_S
 from .determination.building import BODY_RADIUS_KM, Builder, residuals_under
-from .determination.fitting import FORCES, Forces, make_fit
+from .determination.fitting import FORCE_PARAMETERS, FORCES, Forces, make_fit
 from .determination.orbit_fit import OrbitFit
 from .determination.preliminary import Preliminary
 from .determination.ranking import contradicted, ranked
@@ -397,8 +397,7 @@ def fit(
     if len(obs) < 3:
         raise UsageError(f"a fit needs three observations, got {len(obs)}")
     states, words, rivals = _starts(obs, start)
-    unknown = {"area-to-mass": "area_to_mass_m2_kg", "ballistic": "ballistic_m2_kg"}
-    estimated = tuple(unknown[asked] for asked in estimate if asked in unknown)
+    estimated = tuple(FORCE_PARAMETERS[asked][0] for asked in estimate if asked in FORCE_PARAMETERS)
     wanted = Forces(forces, area_to_mass_m2_kg, ballistic_m2_kg, estimated)
     return make_fit(obs, states, words, wanted, reject, tuple(estimate), lists["keep"], lists["leave_out"], rivals)
 

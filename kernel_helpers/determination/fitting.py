@@ -34,9 +34,11 @@ Array = NDArray[np.float64]
 FORCES = ("two-body", "full")
 #: Sightings within so many sigmas (and as many arcsec for the ephemeris) of a planet's place are of that planet.
 SEEN_SIGMAS = 5.0
-AREA_TO_MASS, BALLISTIC = "area-to-mass", "ballistic coefficient C_D A/m"
-#: The force model's own names of what is estimated.
-FORCE_NAMES = {AREA_TO_MASS: "area_to_mass_m2_kg", BALLISTIC: "ballistic_m2_kg"}
+#: What can be estimated of the forces: the force model's own name of it, and its name for people.
+FORCE_PARAMETERS = {
+    "area-to-mass": ("area_to_mass_m2_kg", "area-to-mass"),
+    "ballistic": ("ballistic_m2_kg", "ballistic coefficient C_D A/m"),
+}
 #: How the reason begins where forces are left out because no single orbit is fixed.
 _OPEN = "The arc fixes no single orbit"
 
@@ -197,12 +199,10 @@ def parameters_of(obs: Observations, estimate: Sequence[str]) -> tuple[list[Para
             else:
                 parameters.append(StationOffset(index))
                 names += [(f"{axis} of {code}", "m", 1000.0) for axis in ("east", "north", "up")]
-        elif asked == "area-to-mass":
-            parameters.append(ForceParameter("area_to_mass_m2_kg"))
-            names.append((AREA_TO_MASS, "m²/kg", 1.0))
-        elif asked == "ballistic":
-            parameters.append(ForceParameter("ballistic_m2_kg"))
-            names.append((BALLISTIC, "m²/kg", 1.0))
+        elif asked in FORCE_PARAMETERS:
+            own, words = FORCE_PARAMETERS[asked]
+            parameters.append(ForceParameter(own))
+            names.append((words, "m²/kg", 1.0))
         else:
             raise UsageError(f"estimate holds {asked!r}; give {form}")
     return parameters, names
@@ -332,11 +332,11 @@ def _open(part: float) -> str:
     )
 
 
-def fitted_model(model: ForceModel, names: Sequence[tuple[str, str, float]], found: LeastSquares) -> ForceModel:
+def fitted_model(model: ForceModel, found: LeastSquares) -> ForceModel:
     """The forces with the values that the fit found for what was estimated of them."""
-    for (name, _, _), value in zip(names, found.parameters, strict=True):
-        if name in FORCE_NAMES and np.isfinite(value):
-            model = model.with_value(FORCE_NAMES[name], float(value))
+    for name, value in zip(found.parameter_names, found.parameters, strict=True):
+        if name in model.parameters and np.isfinite(value):
+            model = model.with_value(name, float(value))
     return model
 
 
@@ -377,7 +377,7 @@ def result_of(
             Estimate(name, float(value) * factor, float(sigma) * factor, unit)
             for (name, unit, factor), value, sigma in zip(names, found.parameters, sigmas, strict=True)
         ),
-        forces=fitted_model(model, names, found).sentence,
+        forces=fitted_model(model, found).sentence,
         forces_reason=model.reason or forces.reason,
         start=start_words,
         iterations=sum(len(part) for part in found.history),
