@@ -8,6 +8,7 @@ from dataclasses import dataclass, fields, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from firstarc.observing.read_only_arrays import ReadOnlyArrays
 from firstarc.observing.stations import Site
 
 
@@ -41,7 +42,7 @@ class Doubt:
 
 
 @dataclass(frozen=True, eq=False)
-class Records:
+class Records(ReadOnlyArrays):
     """Recorded observations, one array per quantity, all of length n.
 
     Attributes
@@ -88,16 +89,6 @@ class Records:
     sites: tuple[Site, ...]
     designations: tuple[Designations, ...]
     others: tuple[tuple[str, tuple[str, ...]], ...] = ()
-
-    def __post_init__(self) -> None:
-        for field in fields(self):
-            value = getattr(self, field.name)
-            if isinstance(value, np.ndarray):
-                value.setflags(write=False)
-
-    def __setstate__(self, state: dict[str, object]) -> None:
-        self.__dict__.update(state)
-        self.__post_init__()
 
     def __len__(self) -> int:
         return len(self.row)

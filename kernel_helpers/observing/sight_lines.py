@@ -14,6 +14,7 @@ from firstarc.border.solar_system import EarthAndSun, ephemeris
 from firstarc.border.timescales import tai_from_tdb, tdb_minus_tt_s, tt_from_tai
 from firstarc.constants import ARCSEC_RAD, DAY_S
 from firstarc.errors import UsageError
+from firstarc.observing.read_only_arrays import ReadOnlyArrays
 from firstarc.observing.records import Records
 from firstarc.observing.stations import Site
 from firstarc.observing.what_if import WhatIf
@@ -21,7 +22,7 @@ from firstarc.results import same
 
 
 @dataclass(frozen=True, eq=False)
-class SightLines:
+class SightLines(ReadOnlyArrays):
     """Observations as the numeric core takes them: plain arrays, ICRF axes, km, s, rad.
 
     Attributes
@@ -59,16 +60,6 @@ class SightLines:
     range_km: NDArray[np.float64]
     sigma_range_km: NDArray[np.float64]
     light_time: bool
-
-    def __post_init__(self) -> None:
-        for field in fields(self):
-            value = getattr(self, field.name)
-            if isinstance(value, np.ndarray):
-                value.setflags(write=False)
-
-    def __setstate__(self, state: dict[str, object]) -> None:
-        self.__dict__.update(state)
-        self.__post_init__()
 
     def __len__(self) -> int:
         return len(self.t_s)
